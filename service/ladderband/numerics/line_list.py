@@ -1,0 +1,52 @@
+"""A list of assigned lines, as columns."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ladderband.numerics.accuracy import Accuracy, Completeness
+from ladderband.numerics.transition import Floats
+
+Quanta = NDArray[np.int32]
+
+
+@dataclass(frozen=True)
+class LineList:
+    """Lines of one transition.
+
+    position_cm1, intensity : (L,) float64; intensity is Boltzmann weight times Franck-Condon factor
+        (times |mu|^2 / <mu^2> when the moment varies), so a complete list sums to 1.
+    v_initial, v_final : (L, N) int32 quanta.
+    """
+
+    position_cm1: Floats
+    intensity: Floats
+    v_initial: Quanta
+    v_final: Quanta
+    completeness: Completeness
+    accuracy: Accuracy
+    warnings: tuple[str, ...] = ()
+
+    def __len__(self) -> int:
+        return len(self.position_cm1)
+
+
+def assignments(v_initial: Quanta, v_final: Quanta) -> list[str]:
+    """The trade's notation of each line: mode number, final quanta up, initial quanta down.
+
+    ``1^2_0 3^0_1`` is two quanta of mode 1 in the final state out of none, and none of mode 3 out
+    of one (common practice in vibronic spectroscopy; modes count from 1). A line without any quanta
+    is ``0^0_0``, the 0-0 line.
+    """
+    names = []
+    for initial, final in zip(v_initial.tolist(), v_final.tolist(), strict=True):
+        parts = [
+            f"{k}^{n}_{v}"
+            for k, (v, n) in enumerate(zip(initial, final, strict=True), start=1)
+            if v or n
+        ]
+        names.append(" ".join(parts) or "0^0_0")
+    return names
