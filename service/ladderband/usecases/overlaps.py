@@ -21,8 +21,8 @@ from ladderband.numerics.grid import grid_points
 from ladderband.numerics.ladder import UNIT_ROUNDOFF, pair_coefficients
 from ladderband.numerics.matrix_elements import Operator, float_matrix_elements
 from ladderband.numerics.oscillators import OscillatorColumns, rounded
+from ladderband.numerics.progression import thermal_populations
 from ladderband.numerics.transition import Floats
-from ladderband.numerics.units import boltzmann_exponent
 from ladderband.usecases.limits import Limits
 
 MAX_JSON_DIGITS = 15
@@ -258,9 +258,7 @@ def _underflow_warning(tables: list[DecimalTables], digits: int) -> tuple[str, .
     """JSON numbers end at 1e-308; strings do not."""
     if digits > MAX_JSON_DIGITS:
         return ()
-    small = sum(
-        _below_float64(value) for table in tables for row in table.factors for value in row
-    )
+    small = sum(_below_float64(value) for table in tables for row in table.factors for value in row)
     if not small:
         return ()
     return (
@@ -289,21 +287,18 @@ def _present_rows(rows: list[list[Decimal]], digits: int) -> Floats | list[list[
 
 
 def _populations(question: OverlapsQuestion) -> Floats | None:
-    """Boltzmann populations (1 - e^-x) e^(-x v) of the rows, (B, v_initial_max + 1)."""
+    """Boltzmann populations of the rows, (B, v_initial_max + 1)."""
     temperature = question.temperature_k
     if temperature is None:
         return None
     wavenumbers = rounded(question.pairs.wavenumber_initial_cm1)
-    x = np.array([boltzmann_exponent(float(g), temperature) for g in wavenumbers])[:, None]
-    v = np.arange(question.v_initial_max + 1, dtype=np.float64)
-    with np.errstate(under="ignore", invalid="ignore"):
-        weights = np.where(v == 0.0, 1.0, np.exp(-x * v))
-    populations: Floats = -np.expm1(-x) * weights
-    return populations
+    return np.array(
+        [thermal_populations(float(g), temperature, question.v_initial_max) for g in wavenumbers]
+    )
 
 
 def _populations_accuracy(question: OverlapsQuestion) -> Accuracy | None:
-    """x within 6 units of 2^-53, so x v e^(-x v) <= 1/e limits the error to 20 units: 2.3e-15."""
+    """Proved at :func:`ladderband.numerics.progression.thermal_populations`."""
     if question.temperature_k is None:
         return None
     return Accuracy(20.0 * UNIT_ROUNDOFF, "proven", "closed form")
