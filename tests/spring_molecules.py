@@ -7,6 +7,7 @@ under translation and rotation, for any masses: what identities like the product
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -34,30 +35,21 @@ def random_molecule(rng: np.random.Generator, n_atoms: int) -> Molecule:
     return Molecule(numbers, places, np.array([isotope_mass_u(z) for z in numbers]))
 
 
-def spring_hessian(molecule: Molecule, rng: np.random.Generator, *, bend: float = 0.0) -> Any:
-    """(3N, 3N) in hartree/bohr^2: 0.05 to 0.4 a spring, weaker with distance.
-
-    ``bend``: for linear molecules, a stiffness 1 - 2 1 of each inner atom across the axis z.
+def spring_hessian(molecule: Molecule, rng: np.random.Generator) -> Any:
+    """(3N, 3N) in hartree/bohr^2: springs of 0.05 to 0.4, weaker with distance, and 0.03 on every
+    motion that is not rigid, so that no mode is soft.
     """
     n = molecule.n_atoms
-    hessian = np.zeros((3 * n, 3 * n))
+    rigid = replace(molecule, masses_u=np.ones(n)).rigid_motions
+    hessian = 0.03 * (np.eye(3 * n) - rigid @ rigid.T)
     for a in range(n):
         for b in range(a):
             line = molecule.geometry_angstrom[a] - molecule.geometry_angstrom[b]
             length = float(np.linalg.norm(line))
             stretch = np.zeros(3 * n)
             stretch[3 * a : 3 * a + 3], stretch[3 * b : 3 * b + 3] = line / length, -line / length
-            strength = rng.uniform(0.05, 0.4) * np.exp(-(length - 1.0))
+            strength = rng.uniform(0.05, 0.4) * np.exp(-2.0 * (length - 1.0))
             hessian += strength * np.outer(stretch, stretch)
-    z = molecule.geometry_angstrom[:, 2]
-    for a in range(1, n - 1) if bend else ():
-        for axis in (0, 1):
-            across = np.zeros(3 * n)
-            # zero for any straight line through three points, so for every rigid motion
-            across[3 * (a - 1) + axis] = 1.0 / (z[a] - z[a - 1])
-            across[3 * (a + 1) + axis] = 1.0 / (z[a + 1] - z[a])
-            across[3 * a + axis] = -across[3 * (a - 1) + axis] - across[3 * (a + 1) + axis]
-            hessian += bend * np.outer(across, across)
     return hessian
 
 

@@ -25,10 +25,7 @@ SEED = 17
 
 def state(molecule, seed=SEED, scale=1.0):
     rng = np.random.default_rng(seed)
-    bend = 0.1 if molecule.linear else 0.0
-    return HarmonicState(
-        molecule, normal_modes(molecule, scale * spring_hessian(molecule, rng, bend=bend))
-    )
+    return HarmonicState(molecule, normal_modes(molecule, scale * spring_hessian(molecule, rng)))
 
 
 def displaced(molecule, along):

@@ -26,7 +26,7 @@ RNG = np.random.default_rng(5)
 
 
 def hessian_of(molecule):
-    return spring_hessian(molecule, np.random.default_rng(3), bend=0.1 if molecule.linear else 0)
+    return spring_hessian(molecule, np.random.default_rng(3))
 
 
 def independent_wavenumbers(molecule, hessian):

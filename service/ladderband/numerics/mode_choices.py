@@ -72,6 +72,12 @@ def check_choices(choices: tuple[ModeChoice, ...], counts: dict[StateName, int])
     seen: set[tuple[str, int]] = set()
     for index, choice in enumerate(choices):
         pointer = f"/mode_choices/{index}"
+        if counts[choice.state] == 0:
+            raise DomainError(
+                f"The {choice.state} state has no modes of its own: a gradient takes over those of "
+                "the initial state. Name that mode.",
+                f"{pointer}/state",
+            )
         if choice.mode >= counts[choice.state]:
             raise DomainError(
                 f"The {choice.state} state has modes 0 to {counts[choice.state] - 1}; there is no "
