@@ -9,15 +9,16 @@ formulas (Gaussian integral; Mehler kernel), not by the service.
 from __future__ import annotations
 
 from dataclasses import replace
+from itertools import permutations
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from scipy.spatial.transform import Rotation
 
 from ladderband.numerics.accuracy import Deadline
-from ladderband.numerics.alignment import reordered
+from ladderband.numerics.alignment import align, distance, reordered
 from ladderband.numerics.generator import transition_generator
 from ladderband.numerics.normal_modes import normal_modes
 from ladderband.usecases.limits import Limits
@@ -90,12 +91,23 @@ def shuffled(state, order):
     return replace(state, molecule=reordered(state.molecule, order), source=HessianInput(hessian))
 
 
+def only_order_that_fits(reference, moving):
+    """Every other order of equal atoms lies farther by 0.15 angstrom: nothing to choose between."""
+    numbers, as_given = moving.atomic_numbers, tuple(range(moving.n_atoms))
+    best = distance(reference, align(reference, moving)[0])
+    return all(
+        distance(reference, align(reference, reordered(moving, order))[0]) > best + 0.15
+        for order in permutations(as_given)
+        if order != as_given and tuple(numbers[k] for k in order) == numbers
+    )
+
+
 @st.composite
 def invented_pairs(draw):
-    """Two spring states of one invented molecule of 3 to 6 atoms, slightly apart."""
+    """Two spring states of one invented molecule of 3 to 5 atoms, slightly apart."""
     seed = draw(st.integers(0, 10_000))
     rng = np.random.default_rng(seed)
-    molecule = random_molecule(rng, draw(st.integers(3, 6)))
+    molecule = random_molecule(rng, draw(st.integers(3, 5)))
     initial = StateInput(molecule, HessianInput(spring_hessian(molecule, rng)), 0.0)
     geometry = molecule.geometry_angstrom + 0.03 * rng.normal(size=molecule.geometry_angstrom.shape)
     other = replace(molecule, geometry_angstrom=geometry)
@@ -126,6 +138,7 @@ def test_turning_and_shifting_both_states_changes_no_line(pair):
 @settings(max_examples=25, deadline=None)
 def test_reordering_the_final_atoms_changes_no_line(pair):
     initial, final, rng = pair
+    assume(only_order_that_fits(initial.molecule, final.molecule))
     plain = answer(initial, final, atom_order="match").transition
     order = tuple(int(k) for k in rng.permutation(final.molecule.n_atoms))
     other = answer(initial, shuffled(final, order), atom_order="match").transition

@@ -211,8 +211,9 @@ def formaldehyde_excited(coordinates) -> dict:
 
 def tamm_dancoff(ground):
     response = tdscf.TDA(ground)
-    response.nstates, response.conv_tol = 3, 1e-8
+    response.nstates, response.conv_tol = 1, 1e-7
     response.kernel()
+    assert all(response.converged)
     return response
 
 
