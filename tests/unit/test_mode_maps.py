@@ -254,6 +254,14 @@ def test_bad_input_is_refused_with_a_sentence(case):
     assert refusal.value.pointer.startswith("/")
 
 
+def test_dipole_derivatives_that_do_not_cancel_are_asked_about():
+    drifting = MomentInput(np.array([0.0, 0.0, 1.0]), np.eye(9)[:, :3])
+    cancelling = np.vstack([np.eye(3), -np.eye(3), np.zeros((3, 3))])
+    assert any("shifted" in text for text in answer(springs(), springs(), moment=drifting).warnings)
+    fine = answer(springs(), springs(), moment=MomentInput(np.ones(3), cancelling))
+    assert not any("shifted" in text for text in fine.warnings)
+
+
 def test_the_origin_can_be_sent_instead_of_energies():
     found = answer(springs(), springs(seed=2), origin_cm1=12345.0)
     assert found.transition.origin_cm1 == 12345.0
