@@ -262,6 +262,13 @@ def test_dipole_derivatives_that_do_not_cancel_are_asked_about():
     assert not any("shifted" in text for text in fine.warnings)
 
 
+def test_a_displacement_no_band_can_take_is_told():
+    pull = StateInput(None, GradientInput(np.array([0.0, 0, 0, 0, 0, 9, 0, 0, -9])))
+    assert any(
+        "no line list or band takes this" in text for text in answer(springs(), pull).warnings
+    )
+
+
 def test_the_origin_can_be_sent_instead_of_energies():
     found = answer(springs(), springs(seed=2), origin_cm1=12345.0)
     assert found.transition.origin_cm1 == 12345.0

@@ -52,6 +52,11 @@ DRIFT_MENTIONED = 0.05
 """Share of a dipole's derivatives that a shift of the whole molecule may carry before it is told."""
 
 
+SENT_ON_DISPLACEMENT = 63.25
+SENT_ON_RATIO = 50.0
+"""What the resources that take a transition accept: S up to 2000, f/g from 1/50 to 50."""
+
+
 class ModesNeedAChoice(UseCaseError):
     """Modes without an oscillator, and no word from the client on what to do with them."""
 
@@ -339,6 +344,7 @@ def _warnings(
         )
     if any(choice.wavenumber_cm1 is None for choice in question.choices):
         found.append("Zero points and reorganisation energies leave out the frozen modes.")
+    found += _cannot_be_sent_on(mapped)
     if _drift(question.moment) > DRIFT_MENTIONED:
         found.append(
             "The derivatives of the transition dipole do not cancel when the whole molecule is "
@@ -347,6 +353,18 @@ def _warnings(
     if energies.origin_cm1 is None:
         found.append("No energies were given: the transition has its 0-0 line at 0 cm^-1.")
     return found
+
+
+def _cannot_be_sent_on(mapped: ModeMap) -> list[str]:
+    """Pairs that other resources refuse, which means that something is wrong with the input."""
+    ratios = mapped.wavenumbers_final / mapped.wavenumbers_initial
+    far = np.maximum(ratios, 1.0 / ratios) > SENT_ON_RATIO
+    wrong = np.flatnonzero((np.abs(mapped.displacement) > SENT_ON_DISPLACEMENT) | far)
+    return [
+        f"Mode {k} has displacement {mapped.displacement[k]:.3g} and wavenumber ratio "
+        f"{ratios[k]:.3g}: no line list or band takes this. Check units, frames and atoms."
+        for k in wrong
+    ]
 
 
 def _drift(moment: MomentInput | None) -> float:
