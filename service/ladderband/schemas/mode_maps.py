@@ -8,12 +8,8 @@ from ladderband.numerics.mode_choices import ModeChoice
 from ladderband.schemas import ranges
 from ladderband.schemas.base import RequestSchema, StrictSchema
 from ladderband.schemas.fields import Choice, Matrix, Number, Numbers, Objects, Part, Truth, Whole
-from ladderband.schemas.molecular_states import (
-    COORDINATES,
-    MolecularStateSchema,
-    state_of,
-    wrong_at,
-)
+from ladderband.schemas.molecular_states import COORDINATES, MolecularStateSchema, state_of
+from ladderband.schemas.qcschema import wrong_at
 from ladderband.schemas.transition import PROCESSES
 from ladderband.usecases.mode_maps import ModeMapsQuestion, MomentInput
 

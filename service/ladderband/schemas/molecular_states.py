@@ -5,7 +5,6 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from marshmallow import ValidationError
 
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.isotopes import atomic_number, isotope_mass_u
@@ -14,8 +13,8 @@ from ladderband.numerics.transition import Floats
 from ladderband.numerics.units import BOHR_ANGSTROM
 from ladderband.schemas import ranges
 from ladderband.schemas.base import StrictSchema
-from ladderband.schemas.fields import Choice, Complaint, Described, Matrix, Number, Numbers, Part
-from ladderband.schemas.qcschema import DocumentState, QCSchemaDocument
+from ladderband.schemas.fields import Choice, Described, Matrix, Number, Numbers, Part
+from ladderband.schemas.qcschema import DocumentState, QCSchemaDocument, wrong_at
 from ladderband.usecases.mode_maps import MAX_ATOMS
 from ladderband.usecases.molecular_states import (
     GradientInput,
@@ -141,14 +140,6 @@ class MolecularStateSchema(StrictSchema):
         ranges.ENERGY,
         example=-76.4,
     )
-
-
-def wrong_at(pointer: str, detail: str, allowed: str) -> ValidationError:
-    """The error for the member at ``pointer`` (names joined by slashes)."""
-    messages: Any = [Complaint(detail, allowed)]
-    for name in reversed(pointer.split("/")):
-        messages = {name: messages}
-    return ValidationError(messages)
 
 
 SOURCES = ("hessian_hartree_bohr2", "normal_modes", "gradient_hartree_bohr")

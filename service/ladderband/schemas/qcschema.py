@@ -77,9 +77,11 @@ def read_document(document: Mapping[str, Any]) -> DocumentState:
         A member that is needed is missing or is not what the standard says it is.
     """
     if document.get("schema_name") not in SCHEMA_NAMES:
-        raise _wrong("schema_name", "This is not the name of a result document.", SCHEMA_NAMES)
+        raise wrong_at(
+            "schema_name", "This is not the name of a result document.", " or ".join(SCHEMA_NAMES)
+        )
     if document.get("success") is not True:
-        raise _wrong("success", "The calculation did not succeed.", ("true",))
+        raise wrong_at("success", "The calculation did not succeed.", "true")
     molecule = _object(document, "molecule")
     numbers = _atoms(molecule)
     driver, member, derivative = _derivative(document, 3 * len(numbers))
@@ -97,8 +99,9 @@ def read_document(document: Mapping[str, Any]) -> DocumentState:
     )
 
 
-def _wrong(pointer: str, detail: str, allowed: tuple[str, ...]) -> ValidationError:
-    messages: Any = [Complaint(detail, "one of: " + ", ".join(allowed))]
+def wrong_at(pointer: str, detail: str, allowed: str) -> ValidationError:
+    """The error for the member at ``pointer`` (names joined by slashes)."""
+    messages: Any = [Complaint(detail, allowed)]
     for name in reversed(pointer.split("/")):
         messages = {name: messages}
     return ValidationError(messages)
@@ -107,21 +110,21 @@ def _wrong(pointer: str, detail: str, allowed: tuple[str, ...]) -> ValidationErr
 def _object(parent: Mapping[str, Any], name: str) -> Mapping[str, Any]:
     value = parent.get(name)
     if type(value) is not dict:
-        raise _wrong(name, "This member is required.", ("an object",))
+        raise wrong_at(name, "This member is required.", "an object")
     return value
 
 
 def _atoms(molecule: Mapping[str, Any]) -> tuple[int, ...]:
     symbols = molecule.get("symbols")
     if type(symbols) is not list or not symbols or set(map(type, symbols)) != {str}:
-        raise _wrong("molecule/symbols", "This is not a list of symbols.", ('["O", "H", "H"]',))
+        raise wrong_at("molecule/symbols", "This is not a list of symbols.", '["O", "H", "H"]')
     real = molecule.get("real")
     if real is not None and real != [True] * len(symbols):
-        raise _wrong("molecule/real", "There are ghost atoms.", ("true for every atom",))
+        raise wrong_at("molecule/real", "There are ghost atoms.", "true for every atom")
     try:
         return tuple(atomic_number(symbol) for symbol in symbols)
     except DomainError as error:
-        raise _wrong("molecule/symbols", str(error), ("symbols of elements",)) from None
+        raise wrong_at("molecule/symbols", str(error), "symbols of elements") from None
 
 
 def _array(
@@ -132,15 +135,15 @@ def _array(
         array = np.array(parent.get(name))
     except ValueError:  # ragged
         array = np.array(None)
-    allowed = (f"{size} numbers, each {within.text()}",)
+    allowed = f"{size} numbers, each {within.text()}"
     if array.dtype.kind not in "if":
-        raise _wrong(pointer, "This is not an array of numbers.", allowed)
+        raise wrong_at(pointer, "This is not an array of numbers.", allowed)
     if array.size != size:
-        raise _wrong(pointer, f"This holds {array.size} numbers.", allowed)
+        raise wrong_at(pointer, f"This holds {array.size} numbers.", allowed)
     flat = array.ravel().astype(np.float64)
     outside = within.first_outside(flat)
     if outside is not None:
-        raise _wrong(pointer, f"Number {outside} is outside the allowed range.", allowed)
+        raise wrong_at(pointer, f"Number {outside} is outside the allowed range.", allowed)
     return flat
 
 
@@ -178,7 +181,9 @@ def _derivative(document: Mapping[str, Any], size: int) -> tuple[Derivative, str
         if properties.get(name) is not None:
             member = f"properties/{name}"
             return kind, member, _array(properties, name, member, count, within)
-    raise _wrong("driver", "There is neither a Hessian nor a gradient.", ("hessian", "gradient"))
+    raise wrong_at(
+        "driver", "There is neither a Hessian nor a gradient.", "driver hessian or gradient"
+    )
 
 
 def _inner(parent: Mapping[str, Any], name: str) -> Mapping[str, Any]:
