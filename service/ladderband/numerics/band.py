@@ -86,10 +86,9 @@ def plan_sampling(
     if low > high:  # nothing of the axis is inside
         low = high = energies.low
     furthest = max(high - energies.low, energies.high - low, 0.0)
+    period = furthest + light
     if shape.gamma:
-        period = max((furthest + light) / FIT_REACH, 12.0 * shape.gamma)
-    else:
-        period = furthest + light
+        period = max(period / FIT_REACH, 12.0 * shape.gamma)
     heavy = math.sqrt(10.0 * cubic * shape.peak / allowed) if cubic and shape.gamma else 0.0
     if cubic and not shape.gamma:
         heavy = (10.0 * cubic / allowed) ** (1.0 / 3.0)
@@ -99,7 +98,7 @@ def plan_sampling(
     period = 2.0 * math.pi / step
     end = shape.end(0.1 * allowed)
     count = max(math.ceil(end / step) + 1, FIT_ORDER + 1 if shape.gamma else 2)
-    error = shape._beyond((count - 1) * step) + _alias(energies, shape, furthest, light, left, step)
+    error = shape.beyond((count - 1) * step) + _alias(energies, shape, furthest, light, left, step)
     return Sampling(step, count, low, high, error)
 
 
@@ -142,7 +141,7 @@ def density(
     step, count = sampling.step, sampling.count
     correlation = chi(step, count)
     period = 2.0 * math.pi / step
-    times = step * np.arange(count)
+    times: Floats = step * np.arange(count, dtype=np.float64)
     decay = shape.smooth_decay(times)
     plain = np.exp(-shape.gamma * times)
     if shape.gamma:

@@ -40,6 +40,19 @@ class CoupledModes:
     constant: Floats
     total: float
 
+    @property
+    def thermal_rounding(self) -> float:
+        """Change of chi by the rounded Boltzmann exponents x = h c g / (k T), 4 u each.
+
+        |d chi| <= sum_v |d p_v| <= sum_k dx_k E|v_k - nbar_k| <= 4 u sum_k x_k sqrt(nbar(nbar+1)),
+        and x sqrt(nbar(nbar+1)) = x / (2 sinh(x/2)) <= 1. A linear moment weighs level v by v + 1/2
+        over nbar + 1/2, which by Cauchy and Schwarz adds a factor sqrt2, and <mu^2> itself moves by
+        as much as 1: 4 (sqrt2 + 1) < 24.
+        """
+        count = sum(len(block) for block in self.mixed)
+        count += 0 if self.uncoupled is None else len(self.uncoupled.g)
+        return 24.0 * UNIT_ROUNDOFF * count
+
 
 @dataclass(frozen=True)
 class CorrelationFunction:
@@ -153,6 +166,7 @@ def correlation_function(
     value = overlap * factor / modes.total
     error = np.abs(value) * (np.expm1(log_bound) + 16.0 * UNIT_ROUNDOFF)
     error += size * np.exp(log_bound) * factor_bound / modes.total
+    error += modes.thermal_rounding
     # |chi| <= 1: nothing is further away than this, whatever the rounding
     bound = np.minimum(error * (1.0 + 1e-9), 1.0 + np.abs(value))
     return CorrelationFunction(step, value, bound)

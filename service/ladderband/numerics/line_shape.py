@@ -129,20 +129,21 @@ class Broadening:
         """-d ln size / dt at ``time``; it never falls later on."""
         slope = self.sigma**2 * time + self.gamma
         if self.rate:
-            slope += self.slow.real * self.rate * -math.expm1(-self.rate * time)
+            slope -= self.slow.real * self.rate * math.expm1(-self.rate * time)
         return slope
 
     def end(self, allowed: float) -> float:
         """A time T with (1/pi) integral_T^inf |decay| dt <= allowed: size(T)/(pi slope(T))."""
         low, high = 0.0, 1.0 / max(self.sigma, self.gamma, self.rate * abs(self.slow) ** 0.5)
-        while self._beyond(high) > allowed:
+        while self.beyond(high) > allowed:
             low, high = high, 2.0 * high
         for _ in range(30):
             middle = 0.5 * (low + high)
-            low, high = (middle, high) if self._beyond(middle) > allowed else (low, middle)
+            low, high = (middle, high) if self.beyond(middle) > allowed else (low, middle)
         return high
 
-    def _beyond(self, time: float) -> float:
+    def beyond(self, time: float) -> float:
+        """Bound of (1/pi) integral_time^inf |decay| dt."""
         return float(self.size(np.array(time))) / (math.pi * max(self.slope(time), 1e-300))
 
     @property

@@ -102,7 +102,7 @@ def uncoupled_values(
                 mean[:, part],
                 cov[part],
             )
-    times = step * np.arange(start, stop)
+    times: Floats = step * np.arange(start, stop, dtype=np.float64)
     log_bound, mean_bound, cov_bound = _bounds(modes, times)
     return BlockValues(log, log_bound, mean, mean_bound, cov, cov_bound)
 
@@ -145,6 +145,12 @@ def _bounds(modes: UncoupledModes, times: Floats) -> tuple[Floats, Floats, Float
         float((m2 * (each + 20.0 * u * swing)).sum()) + float((m2 * moving).sum()) * times
     )
     return log_bound, mean_bound, cov_bound
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _times(ar: float, ai: float, br: float, bi: float) -> tuple[float, float]:
+    """(a_r + i a_i)(b_r + i b_i)."""
+    return ar * br - ai * bi, ar * bi + ai * br
 
 
 @njit(cache=True, nogil=True, inline="always")
@@ -231,7 +237,7 @@ def _evaluate(
                 )
                 up, up_w = work[1, m] >= 0.0, wi >= 0.0
                 work[4, m] += _turn(up, up_w, xi >= 0.0)
-                yr, yi = half * (xr * vr - xi * vi), half * (xr * vi + xi * vr)
+                yr, yi = _times(half * xr, half * xi, vr, vi)
                 work[4, m] += _turn(xi >= 0.0, vi >= 0.0, yi >= 0.0)
                 work[0, m], work[1, m] = yr, yi
             if k % 4 == 3:
