@@ -192,7 +192,6 @@ def exact_chi(transition: Transition, t: float, digits: int = 40) -> complex:
 
 def _continuous_root(ctx, W, E):
     """sqrt det(1 - EWEW) by the eigenvalues' principal roots: all lie in the right half-plane."""
-    n = len(E)
     half = ctx.diag([ctx.sqrt(e) for e in E])
     Y = half * W * half
     product = ctx.mpf(1)
