@@ -18,19 +18,21 @@ class NotFinite(ArithmeticError):
     """A result holds NaN or infinity; orjson would write it as null without a word."""
 
 
-def json_chunks(members: Mapping[str, Any]) -> Iterator[bytes]:
-    """The JSON object of ``members`` in pieces; arrays may have any shape.
+def json_chunks(members: Mapping[str, Any]) -> bytes | Iterator[bytes]:
+    """The JSON object of ``members``, in pieces when it is large; arrays may have any shape.
 
     Raises
     ------
     NotFinite
         Before the first piece, when an array or a number is not finite.
     """
-    for name, value in members.items():
-        require_finite(name, value)
-    if not any(_is_large(value) for value in members.values()):
-        return iter((orjson.dumps(members, option=_OPTIONS, default=_contiguous),))
-    return _streamed(members)
+    if any(_is_large(value) for value in members.values()):
+        require_finite("answer", members)
+        return _streamed(members)
+    whole = orjson.dumps(members, option=_OPTIONS, default=_contiguous)
+    if b"null" in whole:  # written for NaN as well as for None and inside of strings
+        require_finite("answer", members)
+    return whole
 
 
 def _streamed(members: Mapping[str, Any]) -> Iterator[bytes]:
@@ -87,7 +89,7 @@ def require_finite(name: str, value: Any) -> None:
     elif isinstance(value, float):
         if not np.isfinite(value):
             raise NotFinite(name)
-    elif isinstance(value, dict):
+    elif isinstance(value, Mapping):
         for key, inner in value.items():
             require_finite(f"{name}.{key}", inner)
     elif dataclasses.is_dataclass(value) and not isinstance(value, type):

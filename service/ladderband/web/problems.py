@@ -22,7 +22,7 @@ from werkzeug.exceptions import HTTPException
 
 from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.schemas.base import complaints
-from ladderband.usecases.limits import CostLimitExceeded
+from ladderband.usecases.limits import AnswerTooLarge, CostLimitExceeded
 from ladderband.usecases.mode_maps import ModesNeedAChoice
 
 MEDIA_TYPE = "application/problem+json"
@@ -141,6 +141,11 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "cost-limit", 422, "The request is too much work",
         "The work was estimated before any of it began, and is above the limit of one request.",
         lambda error: {"estimate_s": _finite(error.estimate_s), "limit_s": error.limit_s},
+    ),
+    AnswerTooLarge: Problem(
+        "answer-too-large", 422, "The answer would be too large",
+        "The tables asked for hold more numbers than one answer may.",
+        lambda error: {"numbers": error.numbers, "limit_numbers": error.limit},
     ),
     DeadlineExceeded: Problem(
         "deadline", 503, "The calculation was stopped at its time limit",

@@ -24,7 +24,7 @@ from typing import Any, Generic, TypeVar
 from flask import Blueprint, Response, current_app, g, request
 
 from ladderband import __version__
-from ladderband.formats.json_stream import json_chunks
+from ladderband.formats.json_stream import json_chunks, require_finite
 from ladderband.formats.sheet import Sheet
 from ladderband.numerics.accuracy import Deadline
 from ladderband.schemas.base import AnswerSchema, Loaded, RequestSchema
@@ -72,7 +72,7 @@ class Resource(Generic[Q, A]):
     def from_body(self) -> Response:
         """Answer a POST."""
         settings: Settings = current_app.config["SETTINGS"]
-        body = read_json(request, settings.max_body_bytes, settings.max_json_depth)
+        body = read_json(request.environ, settings.max_body_bytes, settings.max_json_depth)
         return self.answer(self.request.read(body), _view())
 
     def from_query(self) -> Response:
@@ -88,7 +88,7 @@ class Resource(Generic[Q, A]):
         digest = request_digest(self.path, loaded.question)
         g.digest = digest
         tag = digest if name == "json" else _tag_of_view(digest, name, view)
-        if tag in request.if_none_match:
+        if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
             return _not_modified(tag)
         limits: Limits = current_app.config["LIMITS"]
         deadline = Deadline.after(current_app.config["SETTINGS"].deadline_s)
@@ -97,6 +97,7 @@ class Resource(Generic[Q, A]):
         if name == "json":
             body: Body = self._json(loaded.question, answer, warnings, digest)
         else:
+            require_finite("answer", answer)
             sheet = Sheet.of(self.summary, digest, warnings, view)
             body = self.formats[name](sheet, loaded.question, answer)
         return _response(body, name, tag)
