@@ -153,7 +153,7 @@ def _cut_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
             depth = -np.log(part.intensity / highest) / width
         inside = depth < bins - 1
         place = np.floor(depth[inside]).astype(int)
-        number = np.bincount(place, minlength=bins)[:bins].astype(np.float64)
+        number = np.bincount(place, np.ones(len(place)), minlength=bins)[:bins]
         count = _convolved(count, number)
         weights = np.bincount(place, part.intensity[inside], minlength=bins)[:bins]
         caught = _convolved(caught, weights)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from ladderband.web.bands import BANDS
+from ladderband.web.lines import LINES
 from ladderband.web.mode_maps import MODE_MAPS
 from ladderband.web.overlaps import OVERLAPS
 from ladderband.web.progressions import PROGRESSIONS
@@ -16,5 +17,6 @@ RESOURCES: tuple[Resource[Any, Any], ...] = (
     PROGRESSIONS,
     WAVEFUNCTIONS,
     MODE_MAPS,
+    LINES,
     BANDS,
 )
