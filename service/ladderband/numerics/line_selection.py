@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -163,7 +164,7 @@ def _cut_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
     return math.exp(peak - width * max(1, min(wanted, allowed, bins - 1)))
 
 
-def _convolved(a: Floats, b: Floats) -> Floats:
+def _convolved(a: Floats, b: NDArray[Any]) -> Floats:
     return np.maximum(np.asarray(fftconvolve(a, b), dtype=np.float64)[: len(a)], 0.0)
 
 
