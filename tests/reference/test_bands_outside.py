@@ -11,7 +11,7 @@ from scipy import special
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.axis import Axis
-from ladderband.numerics.correlation import coupled_modes, correlation_function, exact_step
+from ladderband.numerics.correlation import correlation_function, coupled_modes, exact_step
 from ladderband.numerics.line_shape import Bath
 from ladderband.numerics.transition import Mode, Moment, Transition
 from ladderband.numerics.units import BOLTZMANN_CM1_K

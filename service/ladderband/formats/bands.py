@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from typing import Any
 
 import numpy as np
+from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
 
 from ladderband.formats.csv import csv_body, csv_columns, csv_head
@@ -61,22 +62,15 @@ def bands_npy(sheet: Sheet, question: BandsQuestion, answer: BandsAnswer) -> Ite
 
 
 def band_plot(question: BandsQuestion, answer: BandsAnswer) -> Draw:
-    """The bands over their axis, the first filled; one colour a direction."""
+    """The bands over their axis; up to two are filled, more run from one colour to the other."""
 
     def draw(figure: Figure, look: Look) -> None:
         ax = axes(figure, look)
-        x = answer.axis.values
-        count = len(answer.bands)
+        x, count = answer.axis.values, len(answer.bands)
+        shades = LinearSegmentedColormap.from_list("bands", [look.first, look.second])
         for index, band in enumerate(answer.bands):
-            colour = look.first if band.process == answer.bands[0].process else look.second
-            ax.plot(
-                x,
-                band.intensity,
-                color=colour,
-                linewidth=1.6,
-                alpha=1.0 - 0.6 * index / max(count, 1) if count > 2 else 1.0,
-                label=_label(band, answer),
-            )
+            colour = shades(index / max(count - 1, 1))
+            ax.plot(x, band.intensity, color=colour, linewidth=1.6, label=_label(band, answer))
             if count <= 2:
                 ax.fill_between(x, band.intensity, color=colour, alpha=0.12, linewidth=0)
         if len(x) > 1:

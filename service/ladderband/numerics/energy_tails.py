@@ -54,7 +54,9 @@ def log_growth(modes: CoupledModes, theta: float) -> float:
 
     theta <= -1 / (k T) is not tried: q would reach 1.
     """
-    columns = [*modes.mixed] if modes.uncoupled is None else [*modes.mixed, modes.uncoupled]
+    columns: list[ModeBlock | UncoupledModes] = [*modes.mixed]
+    if modes.uncoupled is not None:
+        columns.append(modes.uncoupled)
     if any((part.exponents + theta * part.g).min() <= 0.0 for part in columns):
         return math.inf
     parts = [_matrix_growth(block, theta) for block in modes.mixed]
