@@ -11,7 +11,6 @@ from ladderband.numerics.hermite import forbidden_table, hermite_functions
 from ladderband.numerics.line_selection import Selection, transition_lines
 from ladderband.numerics.oscillators import one_pair
 from ladderband.numerics.transition import Mode, Moment, Transition
-from ladderband.numerics.transition import Mode, Moment, Transition
 
 
 def warm() -> None:
@@ -21,7 +20,16 @@ def warm() -> None:
     certified_tables(pair, 1, 1, 1e-13, Deadline.none())  # grid
     hermite_functions(np.linspace(-1.0, 1.0, 3), 2)
     forbidden_table(2200)  # 2000 quanta and their tails: 10 ms, once
+    _warm_bands()
     _warm_lines()
+
+
+def _warm_bands() -> None:
+    modes = (Mode(1000.0, 900.0, 1.0), Mode(500.0, 500.0, 1.0))
+    moment = Moment(np.array([0.0, 0.0, 1.0]), np.ones((2, 3)))
+    for mixing in (None, np.array([[0.6, 0.8], [-0.8, 0.6]])):
+        transition = Transition(modes, temperature_k=300.0, mixing=mixing, moment=moment)
+        correlation_function(coupled_modes(transition), 2.0**-13, 0, 2, Deadline.none())
 
 
 def _warm_lines() -> None:
@@ -32,12 +40,3 @@ def _warm_lines() -> None:
     for moment in moments:
         transition = Transition(modes, temperature_k=200.0, mixing=mixing, moment=moment)
         transition_lines(transition, 0.1, Selection(), 1000, Deadline.none())
-    _warm_bands()
-
-
-def _warm_bands() -> None:
-    modes = (Mode(1000.0, 900.0, 1.0), Mode(500.0, 500.0, 1.0))
-    moment = Moment(np.array([0.0, 0.0, 1.0]), np.ones((2, 3)))
-    for mixing in (None, np.array([[0.6, 0.8], [-0.8, 0.6]])):
-        transition = Transition(modes, temperature_k=300.0, mixing=mixing, moment=moment)
-        correlation_function(coupled_modes(transition), 2.0**-13, 0, 2, Deadline.none())
