@@ -8,7 +8,13 @@ import numpy as np
 import pytest
 
 from ladderband.numerics.certified_generator import certified_thermal_generator
-from ladderband.numerics.quanta_tree import QuantaTree, count_nodes, grow_tree, quanta_of
+from ladderband.numerics.quanta_tree import (
+    COST_UNIT,
+    QuantaTree,
+    count_nodes,
+    grow_tree,
+    quanta_of,
+)
 from line_oracles import dictionary_amplitudes, multiprecision_amplitudes, random_transition
 
 NONE = (np.zeros(3), np.zeros((0, 1)))
@@ -17,6 +23,7 @@ NONE = (np.zeros(3), np.zeros((0, 1)))
 def costs(rng: np.random.Generator, indices: int, width: int) -> np.ndarray:
     """Random non-decreasing costs, some flat (a displaced mode), sorted by the cost of one quantum."""
     steps = rng.exponential(1.0, (indices, width)) * (rng.random((indices, width)) > 0.3)
+    steps = np.rint(steps / COST_UNIT) * COST_UNIT
     steps[:, 0] = 0.0
     table = np.cumsum(steps, axis=1)
     return np.ascontiguousarray(table[np.argsort(table[:, 1], kind="stable")])
@@ -78,7 +85,7 @@ def test_the_running_bound_covers_the_true_error(n: int, total: float, budget: f
     generator, _ = certified_thermal_generator(transition)
     M, w = generator.W[n:, n:].copy(), generator.w[n:].copy()
     width = 30 if n == 1 else 14
-    cost = np.tile(np.arange(width, dtype=float), (n, 1)) * (1.0 if n > 1 else 1.3)
+    cost = np.tile(np.arange(width, dtype=float), (n, 1)) * (1.0 if n > 1 else 1.25)
     nodes = count_nodes(cost, budget, 10**6)
     constant, linear = NONE
     start = np.exp(generator.log_c)

@@ -26,14 +26,20 @@ from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.line_list import Quanta
 from ladderband.numerics.marginals import gaussian_modes, marginal
 from ladderband.numerics.progression import thermal_populations
-from ladderband.numerics.quanta_tree import QuantaTree, count_nodes, grow_tree, quanta_of
+from ladderband.numerics.quanta_tree import (
+    COST_UNIT,
+    QuantaTree,
+    count_nodes,
+    grow_tree,
+    quanta_of,
+)
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.units import boltzmann_exponent
 
 Places = NDArray[np.int64]
 
-BINS = 4000
-"""Resolution of the predicted cost distribution."""
+BINS = 3840
+"""Resolution of the predicted cost distribution: 1/64, so that every bin is in ``COST_UNIT``s."""
 
 COST_MAX = 60.0
 """A set e^60 times rarer than the commonest is never taken."""
@@ -125,6 +131,7 @@ def _sorted_problem(
     best_later = np.maximum.accumulate(np.maximum(weight, 1e-300)[:, ::-1], axis=1)[:, ::-1]
     logarithm = np.log(best_later)
     cost = logarithm[:, :1] - logarithm
+    cost = np.rint(cost / COST_UNIT) * COST_UNIT
     cost[cost > COST_MAX] = np.inf
     used = int(np.max(np.sum(np.isfinite(cost), axis=1)))
     order = np.argsort(cost[:, 1], kind="stable")
@@ -226,11 +233,11 @@ def _ladder(problem: CoupledProblem) -> _Ladder:
 def _largest_within(
     problem: CoupledProblem, prediction: Prediction, limit: int
 ) -> tuple[float, int]:
-    """The largest budget, to 1/30, whose number of sets is within the limit."""
+    """The largest budget, to 1/32, whose number of sets is within the limit."""
     budget = prediction.budget_within(limit)
     nodes = count_nodes(problem.cost, budget, limit)
     while nodes > limit:
-        budget -= 1.0 / 30.0
+        budget -= 1.0 / 32.0
         nodes = count_nodes(problem.cost, budget, limit)
     return budget, nodes
 

@@ -34,8 +34,9 @@ from numpy.typing import NDArray
 from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
-SLACK = 1e-9
-"""Costs are compared with this slack, so that rounding never keeps a set without its smaller ones."""
+COST_UNIT = 2.0**-20
+"""Costs and budgets are multiples of this, so every sum of costs is exact in float64 and a set is
+below the budget or not whatever the order of its quanta: smaller sets are never missing."""
 
 
 @dataclass(frozen=True)
@@ -60,13 +61,21 @@ def _again(last, quanta, left, cost):  # type: ignore[no-untyped-def]
     """Whether the last raised index may be raised once more."""
     if last < 0 or quanta + 1 >= cost.shape[1]:
         return False
-    return cost[last, quanta + 1] - cost[last, quanta] <= left + SLACK
+    return cost[last, quanta + 1] - cost[last, quanta] <= left
 
 
 @njit(cache=True, nogil=True)
 def _stop(last, left, single):  # type: ignore[no-untyped-def]
     """First index after ``last`` that may not be raised; ``single`` = sorted costs of one quantum."""
-    return max(last + 1, np.searchsorted(single, left + SLACK, side="right"))
+    return max(last + 1, np.searchsorted(single, left, side="right"))
+
+
+@njit(cache=True, nogil=True)
+def _has_children(last, quanta, left, cost, single):  # type: ignore[no-untyped-def]
+    """Whether any index from ``last`` on may be raised."""
+    if last + 1 < len(single) and single[last + 1] <= left:
+        return True
+    return _again(last, quanta, left, cost)
 
 
 @njit(cache=True, nogil=True)
@@ -79,7 +88,7 @@ def count_nodes(cost, budget, limit):  # type: ignore[no-untyped-def]
     total = 0
     depth = 0  # the quanta of indices < depth are fixed, all later ones are 0
     while True:
-        if depth < indices and cost[depth, 1] <= left[depth] + SLACK:
+        if depth < indices and cost[depth, 1] <= left[depth]:
             left[depth + 1] = left[depth]
             quanta[depth] = 0
             depth += 1
@@ -92,7 +101,7 @@ def count_nodes(cost, budget, limit):  # type: ignore[no-untyped-def]
             step = np.inf
             if quanta[i] + 1 < width:
                 step = cost[i, quanta[i] + 1]
-            if step <= left[i] + SLACK:
+            if step <= left[i]:
                 quanta[i] += 1
                 left[depth] = left[i] - step
                 break
@@ -125,13 +134,14 @@ def _family(q, span, again, stop, last, first, old, M, w, amplitude, error, scal
         other = place[e]
         size = factor[e] * amplitude[other]
         size_error = factor[e] * error[other] + step * abs(size)
-        row = M[index[e]]
+        row = index[e]
         for up in range(begin, stop):
-            amplitude[base + up - begin] += row[up] * size
-            error[base + up - begin] += abs(row[up]) * size_error
+            coefficient = M[row, up]
+            amplitude[base + up - begin] += coefficient * size
+            error[base + up - begin] += abs(coefficient) * size_error
         if again:
-            value += row[last] * size
-            bound += abs(row[last]) * size_error
+            value += M[row, last] * size
+            bound += abs(M[row, last]) * size_error
     if again:
         amplitude[first] = value * scale
         error[first] = bound * scale
@@ -203,7 +213,7 @@ def _lower_neighbours(q, up, a, b, old, child_base, root, new, entry):  # type: 
 def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear):  # type: ignore[no-untyped-def]
     """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
 
-    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1]; start = c with relative error
+    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], in ``COST_UNIT``s; start = c with relative error
     ``start_error``. constant (3,), linear (3, D): the moment's terms, or linear (0, D) without.
     Returns amplitude, error, parent, last, moment, moment_error.
     """
@@ -262,10 +272,7 @@ def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear): 
                 parent[free] = q
                 last[free] = last[q]
                 rest = left[s] - (cost[last[q], own + 1] - cost[last[q], own])
-                if (
-                    _again(last[q], own + 1, rest, cost)
-                    or _stop(last[q], rest, single) > last[q] + 1
-                ):
+                if _has_children(last[q], own + 1, rest, cost, single):
                     places += 1
                     lists += b - a
                 free += 1
@@ -273,7 +280,7 @@ def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear): 
                 parent[free] = q
                 last[free] = up
                 rest = left[s] - single[up]
-                if _again(up, 1, rest, cost) or _stop(up, rest, single) > up + 1:
+                if _has_children(up, 1, rest, cost, single):
                     places += 1
                     lists += b - a + 1
                 free += 1
@@ -294,7 +301,7 @@ def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear): 
                 if up == last[q]:
                     quanta = own + 1
                     rest = left[s] - (cost[up, own + 1] - cost[up, own])
-                if not (_again(up, quanta, rest, cost) or _stop(up, rest, single) > up + 1):
+                if not _has_children(up, quanta, rest, cost, single):
                     continue
                 new_inner[filled] = child_base[q] + up
                 new_left[filled] = rest
