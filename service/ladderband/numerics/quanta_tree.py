@@ -213,8 +213,9 @@ def _lower_neighbours(q, up, a, b, old, child_base, root, new, entry):  # type: 
 def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear):  # type: ignore[no-untyped-def]
     """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
 
-    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], in ``COST_UNIT``s; start = c with relative error
-    ``start_error``. constant (3,), linear (3, D): the moment's terms, or linear (0, D) without.
+    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s; start = c
+    with relative error ``start_error``. constant (3,), linear (3, D): the moment's terms, or linear
+    (0, D) without.
     Returns amplitude, error, parent, last, moment, moment_error.
     """
     width = cost.shape[1]
