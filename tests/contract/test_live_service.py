@@ -142,6 +142,25 @@ def test_a_client_that_hangs_up_leaves_the_service_up(live_server):
     assert httpx.get(live_server.url + "/healthz").status_code == 200
 
 
+@pytest.mark.parametrize(
+    ("request_text", "status"),
+    {
+        "no HTTP": ("hello\r\n\r\n", 400),
+        "no version": ("GET / HTTP/9.9\r\n\r\n", 400),
+        "bad header": ("GET / HTTP/1.1\r\nno colon\r\n\r\n", 400),
+        "long address": (f"GET /{'a' * 9000} HTTP/1.1\r\n\r\n", 414),
+        "large header": (f"GET / HTTP/1.1\r\nX: {'a' * 9000}\r\n\r\n", 431),
+        "many headers": ("GET / HTTP/1.1\r\n" + "A: 1\r\n" * 200 + "\r\n", 431),
+    }.values(),
+)
+def test_what_is_not_even_http_is_a_problem_document(request_text, status, live_server):
+    answer = early_answer(live_server.url, request_text, [])
+    head, _, body = answer.partition(b"\r\n\r\n")
+    assert head.startswith(f"HTTP/1.1 {status}".encode())
+    assert b"application/problem+json" in head
+    assert json.loads(body)["status"] == status
+
+
 # --- size ---
 
 

@@ -12,6 +12,7 @@ import orjson
 BLOCK = 65536
 """Numbers encoded at a time: about 1.3 MB of text."""
 _OPTIONS = orjson.OPT_SERIALIZE_NUMPY
+_NEVER_INFINITE = frozenset({str, int, bool})
 
 
 class NotFinite(ArithmeticError):
@@ -92,6 +93,10 @@ def require_finite(name: str, value: Any) -> None:
     elif isinstance(value, Mapping):
         for key, inner in value.items():
             require_finite(f"{name}.{key}", inner)
+    elif isinstance(value, (list, tuple)):
+        if not set(map(type, value)) <= _NEVER_INFINITE:
+            for index, inner in enumerate(value):
+                require_finite(f"{name}.{index}", inner)
     elif dataclasses.is_dataclass(value) and not isinstance(value, type):
         for item in dataclasses.fields(value):
             require_finite(f"{name}.{item.name}", getattr(value, item.name))

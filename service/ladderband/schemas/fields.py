@@ -19,6 +19,7 @@ from marshmallow import ValidationError, fields
 from ladderband.numerics.oscillators import Column
 from ladderband.schemas.ranges import Range
 
+CONTROL = re.compile("[\x00-\x1f]")
 NUMERIC = frozenset({int, float})
 NUMERIC_OR_TEXT = frozenset({int, float, str})
 
@@ -121,7 +122,7 @@ class Text(Described):
             raise self.refuse("This is not a string.")
         if len(value) > self.max_length:
             raise self.refuse(f"This string has {len(value)} characters.")
-        if not value.isprintable():
+        if CONTROL.search(value):
             raise self.refuse("This string holds control characters.")
         return value
 

@@ -164,8 +164,15 @@ HTTP_PROBLEMS: dict[int, Problem] = {
         "method-not-allowed", 405, "This method is not offered here", "Allow lists those offered."
     ),
     413: PROBLEMS[BodyTooLarge],
+    414: Problem(
+        "address-too-long", 414, "The address is too long",
+        "The request line has more than 8190 bytes. Send the question as the body of a POST.",
+    ),
     415: PROBLEMS[UnsupportedMediaType],
     429: Problem("too-many-requests", 429, "Too many requests", "Wait as Retry-After says."),
+    431: Problem(
+        "headers-too-large", 431, "The header fields are too large", "Send fewer or shorter."
+    ),
     500: Problem(
         "internal", 500, "The service failed",
         "A fault of the service. Report the instance id; the log holds the rest.",
@@ -180,19 +187,23 @@ def all_problems() -> Iterator[Problem]:
     yield from sorted(unique.values(), key=lambda problem: (problem.status, problem.slug))
 
 
+def members_of(problem: Problem, detail: str | None, instance: str) -> dict[str, Any]:
+    """The members every problem document has."""
+    return {
+        "type": f"/problems/{problem.slug}",
+        "title": problem.title,
+        "status": problem.status,
+        "detail": detail or problem.meaning,
+        "instance": instance,
+    }
+
+
 def document(
     problem: Problem, detail: str | None, extras: Mapping[str, Any] | None = None
 ) -> Response:
     """The problem document as a response."""
     g.problem = problem.slug
-    members = {
-        "type": f"/problems/{problem.slug}",
-        "title": problem.title,
-        "status": problem.status,
-        "detail": detail or problem.meaning,
-        "instance": f"urn:uuid:{uuid.uuid4()}",
-        **(extras or {}),
-    }
+    members = {**members_of(problem, detail, f"urn:uuid:{uuid.uuid4()}"), **(extras or {})}
     response = Response(orjson.dumps(members), status=problem.status, content_type=MEDIA_TYPE)
     if problem.status == 503:
         response.headers["Retry-After"] = str((extras or {}).get("retry_after_s", 1))
