@@ -326,3 +326,25 @@ def test_a_moment_that_varies_is_taken_by_bands(client):
     moment = answer["transition"]["moment"]
     assert np.shape(moment["slopes_debye"]) == (3, 3)
     assert max(band_of(client, answer["transition"])["intensity"]) > 0.0
+
+
+@pytest.mark.parametrize("molecule", ["water", "ammonia"])
+@pytest.mark.parametrize("final", ["cation", "cation_gradient"])
+def test_a_transition_is_answered_by_lines_unchanged(client, molecule, final):
+    states = {
+        "initial": as_document(f"{molecule}_neutral"),
+        "final": as_document(f"{molecule}_{final}"),
+    }
+    answer = asked(client, {"process": "photoelectron", **states})
+    body = {**answer["transition"], "tolerance": 0.02, "max_lines": 5000}
+    sent_on = client.post("/v1/lines", json=body)
+    assert sent_on.status_code == 200, sent_on.text
+    assert sent_on.json["completeness"]["missing_at_most"] <= 0.02
+    lines, f = sent_on.json["lines"], np.array(answer["modes"]["wavenumber_final_cm1"])
+    expected = answer["energies"]["origin_cm1"] + np.array(lines["v_final"]) @ f
+    assert lines["position_cm1"] == pytest.approx(expected, abs=1e-6)
+    # mean of a complete list = mean of the band; 2 % are missing here, at most 25000 cm^-1 up
+    mean = np.average(lines["position_cm1"], weights=lines["intensity"])
+    assert mean == pytest.approx(
+        band_of(client, answer["transition"])["moments"]["mean_cm1"], abs=500
+    )
