@@ -20,8 +20,9 @@ from scipy.sparse.csgraph import connected_components
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.mixed_modes import BlockValues, Complexes, ModeBlock, block_values
+from ladderband.numerics.mixed_modes import BlockValues, ModeBlock, block_values
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.tangent_kernel import Complexes
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.uncoupled_modes import UncoupledModes, uncoupled_values
 from ladderband.numerics.units import boltzmann_exponent
