@@ -110,140 +110,97 @@ def count_nodes(cost, budget, limit):  # type: ignore[no-untyped-def]
             return total
 
 
-@njit(cache=True, nogil=True)
-def _family(q, span, again, stop, last, first, old, M, w, amplitude, error, scale, step):  # type: ignore[no-untyped-def]
-    """Amplitudes and errors of all children of q; factor[e] = sqrt(q_j) of its lower neighbours.
+# A lower neighbour q - e_j is one number: its place, the index j and the quanta q_j.
+_PLACE, _INDEX, _MASK = 24, 12, 0xFFF
 
-    ``scale`` = 1/sqrt(q_last + 1) for the child that raises the last index; ``step`` = gamma.
-    """
-    a, b = span
-    index, _, place, factor = old
-    begin = last + 1
-    base = first + (1 if again else 0)
+
+@njit(cache=True, nogil=True)
+def _packed(place, index, quanta):  # type: ignore[no-untyped-def]
+    return (np.int64(place) << _PLACE) | (np.int64(index) << _INDEX) | np.int64(quanta)
+
+
+@njit(cache=True, nogil=True)
+def _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound):  # type: ignore[no-untyped-def]
+    """sqrt(q_l + 1) times amplitude and error of the children l = low..stop-1 of q."""
     own = amplitude[q]
     own_error = error[q] + step * abs(own)
-    for up in range(begin, stop):
-        amplitude[base + up - begin] = w[up] * own
-        error[base + up - begin] = abs(w[up]) * own_error
-    value = 0.0
-    bound = 0.0
-    if again:
-        value = w[last] * own
-        bound = abs(w[last]) * own_error
-    for e in range(a, b):
-        other = place[e]
-        size = factor[e] * amplitude[other]
-        size_error = factor[e] * error[other] + step * abs(size)
-        row = index[e]
-        for up in range(begin, stop):
+    for up in range(low, stop):
+        value[up] = w[up] * own
+        bound[up] = abs(w[up]) * own_error
+    for neighbour in neighbours:
+        place = neighbour >> _PLACE
+        row = (neighbour >> _INDEX) & _MASK
+        factor = root[neighbour & _MASK]
+        size = factor * amplitude[place]
+        size_error = factor * error[place] + step * abs(size)
+        for up in range(low, stop):
             coefficient = M[row, up]
-            amplitude[base + up - begin] += coefficient * size
-            error[base + up - begin] += abs(coefficient) * size_error
-        if again:
-            value += M[row, last] * size
-            bound += abs(M[row, last]) * size_error
-    if again:
-        amplitude[first] = value * scale
-        error[first] = bound * scale
+            value[up] += coefficient * size
+            bound[up] += abs(coefficient) * size_error
 
 
 @njit(cache=True, nogil=True)
-def _moment_family(q, span, low, stop, old, child_base, raised, terms, found, step):  # type: ignore[no-untyped-def]
-    """Moment amplitude of the children low..stop-1 of q: m_0 S(k) + sum_j m_j sqrt(k_j) S(k - e_j).
+def _child_neighbours(q, up, quanta, neighbours, child_base, out, at):  # type: ignore[no-untyped-def]
+    """Lower neighbours of k = q + e_l into ``out`` from ``at`` on: k - e_j is child l of q - e_j."""
+    for neighbour in neighbours:
+        place = child_base[neighbour >> _PLACE] + up
+        out[at] = _packed(place, (neighbour >> _INDEX) & _MASK, neighbour & _MASK)
+        at += 1
+    out[at] = _packed(q, up, quanta)
+    return at + 1
 
-    k = q + e_l: S(k - e_l) = S(q), and S(k - e_j) is child up of q - e_j.
-    """
-    a, b = span
-    index, _, place, factor = old
+
+@njit(cache=True, nogil=True)
+def _moment_of(child, neighbours, terms, root, found, step):  # type: ignore[no-untyped-def]
+    """Moment amplitude m_0 S(k) + sum_j m_j sqrt(k_j) S(k - e_j) of one node, and its bound."""
     constant, linear = terms
     amplitude, error, moment, moment_error = found
-    last = index[b - 1] if b > a else -1
-    for up in range(low, stop):
-        child = child_base[q] + up
-        root_up = raised if up == last else 1.0
-        for x in range(3):
-            term = constant[x] * amplitude[child]
-            value = term
-            size = abs(term)
-            bound = abs(constant[x]) * error[child]
-            term = linear[x, up] * root_up * amplitude[q]
-            value += term
-            size += abs(term)
-            bound += abs(linear[x, up]) * root_up * error[q]
-            for e in range(a, b):
-                if index[e] == up:
-                    continue
-                other = child_base[place[e]] + up
-                term = linear[x, index[e]] * factor[e] * amplitude[other]
-                value += term
-                size += abs(term)
-                bound += abs(linear[x, index[e]]) * factor[e] * error[other]
-            moment[child, x] = value
-            moment_error[child, x] = 1.01 * bound + step * size
-
-
-@njit(cache=True, nogil=True)
-def _lower_neighbours(q, up, a, b, old, child_base, root, new, entry):  # type: ignore[no-untyped-def]
-    """Lower neighbours of k = q + e_l into ``new`` from ``entry`` on; returns the next entry.
-
-    k - e_j is child up of q - e_j, and stands at child_base[q - e_j] + up.
-    ``old``, ``new``: (index, quanta, place, factor) columns.
-    """
-    index, quanta, place, factor = old
-    new_index, new_quanta, new_place, new_factor = new
-    own = 0
-    end = b
-    if b > a and index[b - 1] == up:
-        own = quanta[b - 1]
-        end = b - 1
-    for e in range(a, end):
-        new_index[entry] = index[e]
-        new_quanta[entry] = quanta[e]
-        new_place[entry] = child_base[place[e]] + up
-        new_factor[entry] = factor[e]
-        entry += 1
-    new_index[entry] = up
-    new_quanta[entry] = own + 1
-    new_place[entry] = q
-    new_factor[entry] = root[own + 1]
-    return entry + 1
+    for x in range(3):
+        value = constant[x] * amplitude[child]
+        size = abs(value)
+        bound = abs(constant[x]) * error[child]
+        for neighbour in neighbours:
+            place = neighbour >> _PLACE
+            factor = linear[x, (neighbour >> _INDEX) & _MASK] * root[neighbour & _MASK]
+            value += factor * amplitude[place]
+            size += abs(factor * amplitude[place])
+            bound += abs(factor) * error[place]
+        moment[child, x] = value
+        moment_error[child, x] = 1.01 * bound + step * size
 
 
 @njit(cache=True, nogil=True)
 def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear):  # type: ignore[no-untyped-def]
     """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
 
-    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s; start = c
-    with relative error ``start_error``. constant (3,), linear (3, D): the moment's terms, or linear
-    (0, D) without.
+    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s, at most 4095
+    quanta and indices; start = c with relative error ``start_error``. constant (3,), linear (3, D): the
+    moment's terms, or linear (0, D) without.
     Returns amplitude, error, parent, last, moment, moment_error.
     """
-    width = cost.shape[1]
+    indices, width = cost.shape
     single = cost[:, 1].copy()
-    amplitude = np.zeros(nodes)
-    error = np.zeros(nodes)
-    parent = np.zeros(nodes, dtype=np.int32)
-    last = np.full(nodes, -1, dtype=np.int16)
-    # child up of node q stands at child_base[q] + up: the first of the family is the one that raises
-    # the last index (if allowed), so up = last fits the same formula
-    child_base = np.zeros(nodes, dtype=np.int32)
+    amplitude = np.empty(nodes)
+    error = np.empty(nodes)
+    parent = np.empty(nodes, dtype=np.int32)
+    last = np.empty(nodes, dtype=np.int16)
+    # child l of node q stands at child_base[q] + l
+    child_base = np.empty(nodes, dtype=np.int32)
     root = np.sqrt(np.arange(width + 2, dtype=np.float64))
-    amplitude[0] = start
-    error[0] = start_error * abs(start)
+    amplitude[0], error[0], parent[0], last[0] = start, start_error * abs(start), 0, -1
     varies = len(linear) > 0
     moment = np.zeros((nodes if varies else 0, 3))
     moment_error = np.zeros((nodes if varies else 0, 3))
+    terms = (constant, linear)
+    found = (amplitude, error, moment, moment_error)
     if varies:
-        for x in range(3):
-            moment[0, x] = constant[x] * start
-            moment_error[0, x] = abs(constant[x]) * (1.01 * error[0] + 30 * UNIT_ROUNDOFF * start)
-    # the nodes of the shell before that have children, and their lower neighbours, cut by ``at``
-    inner = np.zeros(1, dtype=np.int32)
+        _moment_of(0, np.empty(0, dtype=np.int64), terms, root, found, 30 * UNIT_ROUNDOFF)
+    value, bound = np.empty(indices), np.empty(indices)
+    # the nodes of the last shell that have children, and their lower neighbours, cut by ``at``
+    inner = np.zeros(1 if nodes > 1 else 0, dtype=np.int32)
     left = np.full(1, budget)
     at = np.zeros(2, dtype=np.int64)
-    old = _columns(0)
-    if _stop(-1, budget, single) == 0:
-        inner = inner[:0]
+    lists = np.empty(0, dtype=np.int64)
     free = 1
     shell = 0
     while len(inner) > 0:
@@ -251,76 +208,54 @@ def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear): 
         # roundings of one element: a product and a sum for each of at most ``shell`` neighbours,
         # sqrt, factor, scale, and 16 for the coefficients M, w themselves
         step = 1.01 * (shell + 22.0) * UNIT_ROUNDOFF
-        places, lists = 0, 0
-        for s in range(len(inner)):  # families: amplitudes, and where they stand
-            q = inner[s]
-            a, b = at[s], at[s + 1]
-            own = old[1][b - 1] if b > a else 0
-            raised = _again(last[q], own, left[s], cost)
-            stop = _stop(last[q], left[s], single)
-            child_base[q] = free - last[q] - (0 if raised else 1)
-            span = (a, b)
-            scale = 1.0 / root[own + 1]
-            _family(q, span, raised, stop, last[q], free, old, M, w, amplitude, error, scale, step)
-            if varies:
-                low = last[q] if raised else last[q] + 1
-                found = (amplitude, error, moment, moment_error)
-                terms = (constant, linear)
-                _moment_family(
-                    q, span, low, stop, old, child_base, root[own + 1], terms, found, step
-                )
-            if raised:
-                parent[free] = q
-                last[free] = last[q]
-                rest = left[s] - (cost[last[q], own + 1] - cost[last[q], own])
-                if _has_children(last[q], own + 1, rest, cost, single):
-                    places += 1
-                    lists += b - a
-                free += 1
-            for up in range(last[q] + 1, stop):
-                parent[free] = q
-                last[free] = up
-                rest = left[s] - single[up]
-                if _has_children(up, 1, rest, cost, single):
-                    places += 1
-                    lists += b - a + 1
-                free += 1
-        new = _columns(lists)
-        new_inner = np.empty(places, dtype=np.int32)
-        new_left = np.empty(places)
-        new_at = np.zeros(places + 1, dtype=np.int64)
+        room = nodes - free
+        new_inner = np.empty(min(room, len(inner) * indices), dtype=np.int32)
+        new_left = np.empty(len(new_inner))
+        new_at = np.zeros(len(new_inner) + 1, dtype=np.int64)
+        new_lists = np.empty(2 * len(lists) + 64 * indices, dtype=np.int64)
         filled, entry = 0, 0
-        for s in range(len(inner)):  # neighbours of those children that have children
+        for s in range(len(inner)):
             q = inner[s]
-            a, b = at[s], at[s + 1]
-            own = old[1][b - 1] if b > a else 0
-            stop = _stop(last[q], left[s], single)
-            raised = _again(last[q], own, left[s], cost)
-            for up in range(last[q] if raised else last[q] + 1, stop):
+            neighbours = lists[at[s] : at[s + 1]]
+            tail = last[q]
+            own = neighbours[-1] & _MASK if len(neighbours) else 0
+            raised = _again(tail, own, left[s], cost)
+            low = tail if raised else tail + 1
+            stop = _stop(tail, left[s], single)
+            child_base[q] = free - low
+            _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound)
+            if entry + (stop - low) * (len(neighbours) + 1) > len(new_lists):
+                longer = np.empty(2 * len(new_lists) + indices * (indices + 1), dtype=np.int64)
+                longer[:entry] = new_lists[:entry]
+                new_lists = longer
+            for up in range(low, stop):
                 quanta = 1
                 rest = left[s] - single[up]
-                if up == last[q]:
+                others = neighbours
+                if up == tail:
                     quanta = own + 1
-                    rest = left[s] - (cost[up, own + 1] - cost[up, own])
-                if not _has_children(up, quanta, rest, cost, single):
-                    continue
-                new_inner[filled] = child_base[q] + up
-                new_left[filled] = rest
-                entry = _lower_neighbours(q, up, a, b, old, child_base, root, new, entry)
-                filled += 1
-                new_at[filled] = entry
-        inner, left, at, old = new_inner, new_left, new_at, new
+                    rest = left[s] - (cost[up, quanta] - cost[up, own])
+                    others = neighbours[:-1]
+                scale = 1.0 / root[quanta]
+                amplitude[free] = value[up] * scale
+                error[free] = bound[up] * scale
+                parent[free] = q
+                last[free] = up
+                parental = _has_children(up, quanta, rest, cost, single)
+                if parental or varies:
+                    end = _child_neighbours(q, up, quanta, others, child_base, new_lists, entry)
+                    if varies:
+                        _moment_of(free, new_lists[entry:end], terms, root, found, step)
+                    if parental:
+                        new_inner[filled] = free
+                        new_left[filled] = rest
+                        filled += 1
+                        new_at[filled] = end
+                        entry = end
+                free += 1
+        inner, left, at = new_inner[:filled].copy(), new_left[:filled].copy(), new_at
+        lists = new_lists[:entry].copy()
     return amplitude, error, parent, last, moment, moment_error
-
-
-@njit(cache=True, nogil=True)
-def _columns(size):  # type: ignore[no-untyped-def]
-    return (
-        np.empty(size, dtype=np.int16),
-        np.empty(size, dtype=np.int16),
-        np.empty(size, dtype=np.int32),
-        np.empty(size, dtype=np.float64),
-    )
 
 
 @njit(cache=True, nogil=True)
