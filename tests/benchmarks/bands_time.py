@@ -9,8 +9,8 @@ from __future__ import annotations
 
 import os
 
-for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
-    os.environ[_name] = "1"
+os.environ["OMP_NUM_THREADS"] = "1"
+os.environ["OPENBLAS_NUM_THREADS"] = "1"
 
 import resource
 import time
@@ -22,7 +22,7 @@ from scipy.linalg import lapack
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.axis import Axis
-from ladderband.numerics.correlation import coupled_modes, correlation_function, exact_step
+from ladderband.numerics.correlation import correlation_function, coupled_modes, exact_step
 from ladderband.numerics.transition import Mode, Transition
 from ladderband.numerics.warm import warm
 from ladderband.usecases import bands as module
