@@ -24,6 +24,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 
 from ladderband.numerics.correlation import CorrelationFunction, exact_step
 from ladderband.numerics.energy_tails import EnergyRange
@@ -33,7 +34,13 @@ from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 LAGRANGE = 16
-_NODES = np.arange(LAGRANGE) - (LAGRANGE // 2 - 1)
+_INVERSE = np.array(
+    [
+        (-1.0) ** (LAGRANGE - 1 - j) / (math.factorial(j) * math.factorial(LAGRANGE - 1 - j))
+        for j in range(LAGRANGE)
+    ]
+)
+"""1 / prod_{i != j} (j - i)."""
 _WAVE_ERROR = (2027025.0 / 256.0) ** 2 / math.factorial(LAGRANGE)
 
 STEPS_AN_OCTAVE = 4
@@ -158,7 +165,7 @@ def density(
     inside = (energies >= sampling.low) & (energies <= sampling.high)
     value = np.zeros(len(energies))
     place = energies[inside] * (length / period)
-    value[inside], lebesgue = _interpolate(grid, place)
+    value[inside], lebesgue = interpolated(grid, place)
     amount = weights * np.abs(c) / period
     wave = float(amount @ (2.0 * math.pi * np.arange(count) / length) ** LAGRANGE) * _WAVE_ERROR
     rounding = float((weights * size) @ (correlation.bound + 64.0 * UNIT_ROUNDOFF)) / period
@@ -172,17 +179,30 @@ def density(
     return Density(value, bound * (1.0 + 1e-9), sampling.low, sampling.high)
 
 
-def _interpolate(grid: Floats, place: Floats) -> tuple[Floats, float]:
+def interpolated(grid: Floats, place: Floats) -> tuple[Floats, float]:
     """16-point Lagrange interpolation of a periodic grid; also the largest sum of |weights|."""
-    if not len(place):
-        return np.empty(0), 1.0
-    whole = np.floor(place)
-    offsets = (place - whole)[:, None] - _NODES
-    weights = np.ones((len(place), LAGRANGE))
-    for j in range(LAGRANGE):
-        for i in range(LAGRANGE):
-            if i != j:
-                weights[:, j] *= offsets[:, i] / float(_NODES[j] - _NODES[i])
-    index = (whole.astype(np.int64)[:, None] + _NODES) % len(grid)
-    value: Floats = (grid[index] * weights).sum(axis=1)
-    return value, float(np.abs(weights).sum(axis=1).max())
+    value = np.empty(len(place))
+    return value, float(_lagrange(grid, place, _INVERSE, value))
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _lagrange(grid: Floats, place: Floats, inverse: Floats, value: Floats) -> float:
+    """Weights as products of the distances before and after each node over a constant."""
+    before, after = np.empty(LAGRANGE), np.empty(LAGRANGE)
+    largest = 1.0
+    for p in range(len(place)):
+        whole = math.floor(place[p])
+        first = int(whole) - (LAGRANGE // 2 - 1)
+        distance = place[p] - whole + (LAGRANGE // 2 - 1)
+        before[0], after[LAGRANGE - 1] = 1.0, 1.0
+        for j in range(1, LAGRANGE):
+            before[j] = before[j - 1] * (distance - (j - 1))
+            after[LAGRANGE - 1 - j] = after[LAGRANGE - j] * (distance - (LAGRANGE - j))
+        total, size = 0.0, 0.0
+        for j in range(LAGRANGE):
+            weight = before[j] * after[j] * inverse[j]
+            total += weight * grid[(first + j) % len(grid)]
+            size += abs(weight)
+        value[p] = total
+        largest = max(largest, size)
+    return largest
