@@ -68,23 +68,25 @@ def certified_tables(
             reached=f"{SMALLEST_TOLERANCE:.2g}",
         )
     coefficients = pair_coefficients(pairs)
-    names = np.full(len(pairs), "ladder", dtype=object)
+    names = ["ladder"] * len(pairs)
     if ladder_is_hopeless(v_initial_max, v_final_max, tolerance):
         tables = np.zeros((len(pairs), v_initial_max + 1, v_final_max + 1))
         bounds = np.full(len(pairs), np.inf)
     else:
         tables, bounds = ladder_tables(coefficients, v_initial_max, v_final_max)
-    # in chunks, so that the deadline is seen; one pair is at most some 0.5 s
     missed = np.flatnonzero(bounds > tolerance)
-    for chunk in np.array_split(missed, max(1, len(missed) // 64)):
+    for begin in range(0, len(missed), 64):  # the deadline is seen between chunks
         deadline.check()
-        grid_tables(coefficients, chunk, tables, bounds, tolerance)
-        names[chunk] = "grid"
-    for index in np.flatnonzero(bounds > tolerance):
-        tables[index], bounds[index] = _rounded_balls(
-            ExactPair.of(pairs, int(index)), v_initial_max, v_final_max, tolerance, deadline
-        )
-        names[index] = "balls"
+        grid_tables(coefficients, missed[begin : begin + 64], tables, bounds, tolerance)
+    for index in missed.tolist():
+        names[index] = "grid"
+        if bounds[index] > tolerance:
+            deadline.check()
+            pair = ExactPair.of(pairs, index)
+            tables[index], bounds[index] = _rounded_balls(
+                pair, v_initial_max, v_final_max, tolerance, deadline
+            )
+            names[index] = "balls"
     return CertifiedTables(tables, bounds, tuple(names))
 
 
