@@ -8,7 +8,7 @@ from flask import Flask, Response, request
 
 from ladderband.settings import Settings, load_settings
 from ladderband.usecases.limits import Limits
-from ladderband.web import operations, pages, problems
+from ladderband.web import bands_guide, operations, pages, problems
 from ladderband.web.resource import blueprint_of
 from ladderband.web.resources import RESOURCES
 
@@ -24,6 +24,7 @@ def create_app(settings: Settings | None = None) -> Flask:
     problems.install(app)
     operations.install(app, settings.log_requests)
     app.register_blueprint(pages.blueprint)
+    app.register_blueprint(bands_guide.blueprint)
     for resource in RESOURCES:
         app.register_blueprint(blueprint_of(resource))
     if settings.origins:
