@@ -222,7 +222,7 @@ def _selected(
     error: float,
 ) -> LineList:
     """The strongest lines inside the selection, strongest first."""
-    strong = np.flatnonzero(joint.intensity >= selection.threshold * joint.intensity.max())
+    strong = np.flatnonzero(joint.intensity >= selection.threshold * joint.intensity.max(initial=0.0))
     order = strong[np.argsort(-joint.intensity[strong], kind="stable")]
     chosen, v, n, position = _inside(transition, blocks, parts, joint, order, selection)
     return LineList(
