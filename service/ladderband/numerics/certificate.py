@@ -37,6 +37,15 @@ class CertifiedTables:
         return "+".join(sorted(set(self.routes)))
 
 
+BALL_ELEMENTS = 200_000
+"""Largest table (elements) that is tried in balls when the grid misses: about 0.5 s."""
+
+
+def grid_reach(v_initial_max: int, v_final_max: int) -> float:
+    """A tolerance the grid is sure to meet, from a fit: below it, expect balls (only for the cost)."""
+    return 1e-12 + 6e-14 * max(v_initial_max, v_final_max)
+
+
 def ladder_is_hopeless(v_initial_max: int, v_final_max: int, tolerance: float) -> bool:
     """Whether the ladder's bound is sure to miss: rho_l >= 24 u l |S_{l-2}| with shells of about 0.3.
 
@@ -58,7 +67,8 @@ def certified_tables(
     Raises
     ------
     PrecisionNotReached
-        The tolerance is below what float64 can hold.
+        The tolerance is below what float64 can hold, or below the grid's bound for a table too large
+        for balls.
     """
     if tolerance < SMALLEST_TOLERANCE:
         raise PrecisionNotReached(
@@ -82,12 +92,24 @@ def certified_tables(
         names[index] = "grid"
         if bounds[index] > tolerance:
             deadline.check()
+            _admit_balls(tables[index].size, float(bounds[index]), tolerance)
             pair = ExactPair.of(pairs, index)
             tables[index], bounds[index] = _rounded_balls(
                 pair, v_initial_max, v_final_max, tolerance, deadline
             )
             names[index] = "balls"
     return CertifiedTables(tables, bounds, tuple(names))
+
+
+def _admit_balls(elements: int, bound: float, tolerance: float) -> None:
+    if elements > BALL_ELEMENTS:
+        raise PrecisionNotReached(
+            f"The best proven bound of this table in float64 is {bound:.2g}, above the tolerance "
+            f"{tolerance:.2g}, and it is too large for exact arithmetic. Raise the tolerance or ask "
+            "for fewer quanta.",
+            requested=f"{tolerance:.2g}",
+            reached=f"{bound:.2g}",
+        )
 
 
 def _rounded_balls(

@@ -40,6 +40,9 @@ ROUNDINGS = 28
 """Roundings on the longest path to an element: 16 in a coefficient, 2 square roots, 3 products, 4
 sums, 2 in the division by v + n; one more covers second order."""
 
+DISPLACEMENT_ROUNDINGS = {"displacement": 1.0, "huang_rhys": 2.0, "shift_angstrom_sqrt_u": 6.0}
+"""Units of 2^-53 by which Delta may be off; see :meth:`OscillatorColumns.displacements`."""
+
 
 @dataclass(frozen=True)
 class PairCoefficients:
@@ -111,7 +114,7 @@ def pair_coefficients(pairs: OscillatorColumns) -> PairCoefficients:
         c_error=(20.0 * exponent + 16.0) * UNIT_ROUNDOFF,
         scale=1.0 / root_t,
         displacement=delta,
-        displacement_error=(6.0 if pairs.shift_kind != "displacement" else 1.0) * UNIT_ROUNDOFF,
+        displacement_error=DISPLACEMENT_ROUNDINGS[pairs.shift_kind] * UNIT_ROUNDOFF,
     )
 
 
