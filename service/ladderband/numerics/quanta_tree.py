@@ -25,7 +25,10 @@ small for the sets of a polyatomic band; the result says how large it is.
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numba import njit
@@ -37,6 +40,13 @@ from ladderband.numerics.transition import Floats
 COST_UNIT = 2.0**-20
 """Costs and budgets are multiples of this, so every sum of costs is exact in float64 and a set is
 below the budget or not whatever the order of its quanta: smaller sets are never missing."""
+
+
+THREADED_FROM = 8192
+"""Inner nodes of a shell from which two threads pay (a shell of that size takes about 1 ms)."""
+
+Shell = tuple[NDArray[np.int32], Floats, NDArray[np.int64], NDArray[np.int64]]
+"""Nodes of a shell that have children: place, budget left, cuts of the list, lower neighbours."""
 
 
 @dataclass(frozen=True)
@@ -170,92 +180,180 @@ def _moment_of(child, neighbours, terms, root, found, step):  # type: ignore[no-
 
 
 @njit(cache=True, nogil=True)
-def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear):  # type: ignore[no-untyped-def]
+def _plan(begin, end, shell, last, cost, single):  # type: ignore[no-untyped-def]
+    """(children, children that have children, their neighbours) of inner nodes begin..end-1."""
+    inner, left, at, lists = shell
+    children, parents, entries = 0, 0, 0
+    for s in range(begin, end):
+        tail = last[inner[s]]
+        size = at[s + 1] - at[s]
+        own = lists[at[s + 1] - 1] & _MASK if size else 0
+        if _again(tail, own, left[s], cost):
+            children += 1
+            rest = left[s] - (cost[tail, own + 1] - cost[tail, own])
+            if _has_children(tail, own + 1, rest, cost, single):
+                parents += 1
+                entries += size
+        stop = _stop(tail, left[s], single)
+        children += stop - tail - 1
+        for up in range(tail + 1, stop):
+            if _has_children(up, 1, left[s] - single[up], cost, single):
+                parents += 1
+                entries += size + 1
+    return children, parents, entries
+
+
+@njit(cache=True, nogil=True)
+def _fill(begin, end, free, filled, entry, shell, below, tree, ladder, cost, moments, step):  # type: ignore[no-untyped-def]
+    """Children of the inner nodes begin..end-1, written from ``free``, ``filled``, ``entry`` on.
+
+    Reads only finished shells and writes only its own places, so slices may run side by side.
+    """
+    inner, left, at, lists = shell
+    new_inner, new_left, new_at, new_lists = below
+    amplitude, error, parent, last, child_base = tree
+    M, w, root, single = ladder
+    constant, linear, moment, moment_error = moments
+    varies = len(linear) > 0
+    terms = (constant, linear)
+    found = (amplitude, error, moment, moment_error)
+    value, bound = np.empty(len(w)), np.empty(len(w))
+    own_list = np.empty(len(w) + 1, dtype=np.int64)
+    for s in range(begin, end):
+        q = inner[s]
+        neighbours = lists[at[s] : at[s + 1]]
+        tail = last[q]
+        own = neighbours[-1] & _MASK if len(neighbours) else 0
+        raised = _again(tail, own, left[s], cost)
+        low = tail if raised else tail + 1
+        stop = _stop(tail, left[s], single)
+        child_base[q] = free - low
+        _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound)
+        for up in range(low, stop):
+            quanta = 1
+            rest = left[s] - single[up]
+            others = neighbours
+            if up == tail:
+                quanta = own + 1
+                rest = left[s] - (cost[up, quanta] - cost[up, own])
+                others = neighbours[:-1]
+            scale = 1.0 / root[quanta]
+            amplitude[free] = value[up] * scale
+            error[free] = bound[up] * scale
+            parent[free] = q
+            last[free] = up
+            if varies:
+                size = _child_neighbours(q, up, quanta, others, child_base, own_list, 0)
+                _moment_of(free, own_list[:size], terms, root, found, step)
+            if _has_children(up, quanta, rest, cost, single):
+                entry = _child_neighbours(q, up, quanta, others, child_base, new_lists, entry)
+                new_inner[filled] = free
+                new_left[filled] = rest
+                filled += 1
+                new_at[filled] = entry
+            free += 1
+
+
+def grow_tree(
+    M: Floats,
+    w: Floats,
+    start: float,
+    start_error: float,
+    cost: Floats,
+    budget: float,
+    nodes: int,
+    constant: Floats,
+    linear: Floats,
+) -> QuantaTree:
     """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
 
     M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s, at most 4095
     quanta and indices; start = c with relative error ``start_error``. constant (3,), linear (3, D): the
-    moment's terms, or linear (0, D) without.
-    Returns amplitude, error, parent, last, moment, moment_error.
+    moment's terms, or linear (0, D) without. Large shells are shared by two threads.
     """
-    indices, width = cost.shape
     single = cost[:, 1].copy()
-    amplitude = np.empty(nodes)
-    error = np.empty(nodes)
-    parent = np.empty(nodes, dtype=np.int32)
-    last = np.empty(nodes, dtype=np.int16)
-    # child l of node q stands at child_base[q] + l
-    child_base = np.empty(nodes, dtype=np.int32)
-    root = np.sqrt(np.arange(width + 2, dtype=np.float64))
+    root = np.sqrt(np.arange(cost.shape[1] + 2, dtype=np.float64))
+    amplitude, error = np.empty(nodes), np.empty(nodes)
+    parent, last = np.empty(nodes, dtype=np.int32), np.empty(nodes, dtype=np.int16)
+    child_base = np.empty(nodes, dtype=np.int32)  # child l of node q stands at child_base[q] + l
     amplitude[0], error[0], parent[0], last[0] = start, start_error * abs(start), 0, -1
-    varies = len(linear) > 0
-    moment = np.zeros((nodes if varies else 0, 3))
-    moment_error = np.zeros((nodes if varies else 0, 3))
-    terms = (constant, linear)
-    found = (amplitude, error, moment, moment_error)
-    if varies:
-        _moment_of(0, np.empty(0, dtype=np.int64), terms, root, found, 30 * UNIT_ROUNDOFF)
-    value, bound = np.empty(indices), np.empty(indices)
-    # the nodes of the last shell that have children, and their lower neighbours, cut by ``at``
-    inner = np.zeros(1 if nodes > 1 else 0, dtype=np.int32)
-    left = np.full(1, budget)
-    at = np.zeros(2, dtype=np.int64)
-    lists = np.empty(0, dtype=np.int64)
-    free = 1
-    shell = 0
-    while len(inner) > 0:
-        shell += 1
-        # roundings of one element: a product and a sum for each of at most ``shell`` neighbours,
+    moment, moment_error = _moment_arrays(constant, linear, start, float(error[0]), nodes)
+    tree = (amplitude, error, parent, last, child_base)
+    ladder = (M, w, root, single)
+    moments = (constant, linear, moment, moment_error)
+    shell = (
+        np.zeros(1 if nodes > 1 else 0, dtype=np.int32),
+        np.full(1, budget),
+        np.zeros(2, dtype=np.int64),
+        np.empty(0, dtype=np.int64),
+    )
+    free, quanta = 1, 0
+    while len(shell[0]):
+        quanta += 1
+        # roundings of one element: a product and a sum for each of at most ``quanta`` neighbours,
         # sqrt, factor, scale, and 16 for the coefficients M, w themselves
-        step = 1.01 * (shell + 22.0) * UNIT_ROUNDOFF
-        room = nodes - free
-        new_inner = np.empty(min(room, len(inner) * indices), dtype=np.int32)
-        new_left = np.empty(len(new_inner))
-        new_at = np.zeros(len(new_inner) + 1, dtype=np.int64)
-        new_lists = np.empty(2 * len(lists) + 64 * indices, dtype=np.int64)
-        filled, entry = 0, 0
-        for s in range(len(inner)):
-            q = inner[s]
-            neighbours = lists[at[s] : at[s + 1]]
-            tail = last[q]
-            own = neighbours[-1] & _MASK if len(neighbours) else 0
-            raised = _again(tail, own, left[s], cost)
-            low = tail if raised else tail + 1
-            stop = _stop(tail, left[s], single)
-            child_base[q] = free - low
-            _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound)
-            if entry + (stop - low) * (len(neighbours) + 1) > len(new_lists):
-                longer = np.empty(2 * len(new_lists) + indices * (indices + 1), dtype=np.int64)
-                longer[:entry] = new_lists[:entry]
-                new_lists = longer
-            for up in range(low, stop):
-                quanta = 1
-                rest = left[s] - single[up]
-                others = neighbours
-                if up == tail:
-                    quanta = own + 1
-                    rest = left[s] - (cost[up, quanta] - cost[up, own])
-                    others = neighbours[:-1]
-                scale = 1.0 / root[quanta]
-                amplitude[free] = value[up] * scale
-                error[free] = bound[up] * scale
-                parent[free] = q
-                last[free] = up
-                parental = _has_children(up, quanta, rest, cost, single)
-                if parental or varies:
-                    end = _child_neighbours(q, up, quanta, others, child_base, new_lists, entry)
-                    if varies:
-                        _moment_of(free, new_lists[entry:end], terms, root, found, step)
-                    if parental:
-                        new_inner[filled] = free
-                        new_left[filled] = rest
-                        filled += 1
-                        new_at[filled] = end
-                        entry = end
-                free += 1
-        inner, left, at = new_inner[:filled].copy(), new_left[:filled].copy(), new_at
-        lists = new_lists[:entry].copy()
-    return amplitude, error, parent, last, moment, moment_error
+        step = 1.01 * (quanta + 22.0) * UNIT_ROUNDOFF
+        shell, free = _next_shell(shell, free, tree, ladder, cost, moments, step)
+    return QuantaTree(amplitude, error, parent, last, moment, moment_error)
+
+
+def _next_shell(
+    shell: Shell,
+    free: int,
+    tree: tuple[Any, ...],
+    ladder: tuple[Any, ...],
+    cost: Floats,
+    moments: tuple[Any, ...],
+    step: float,
+) -> tuple[Shell, int]:
+    """The shell above ``shell``, its nodes written from place ``free`` on; and the next free place."""
+    last, single = tree[3], ladder[3]
+    slices = _slices(len(shell[0]))
+    plans = _each(lambda a, b: _plan(a, b, shell, last, cost, single), slices)
+    offsets = np.cumsum([(0, 0, 0), *plans], axis=0).tolist()
+    below = _empty_shell(offsets[-1][1], offsets[-1][2])
+    jobs = [
+        (*piece, free + offset[0], offset[1], offset[2])
+        for piece, offset in zip(slices, offsets, strict=False)
+    ]
+    _each(lambda *job: _fill(*job, shell, below, tree, ladder, cost, moments, step), jobs)
+    return below, free + offsets[-1][0]
+
+
+def _moment_arrays(
+    constant: Floats, linear: Floats, start: float, start_error: float, nodes: int
+) -> tuple[Floats, Floats]:
+    """Arrays for the moment's amplitudes, the vacuum's filled in; empty without a moment."""
+    if not len(linear):
+        return np.empty((0, 3)), np.empty((0, 3))
+    moment, error = np.empty((nodes, 3)), np.empty((nodes, 3))
+    moment[0] = constant * start
+    error[0] = np.abs(constant) * (1.01 * start_error + 30 * UNIT_ROUNDOFF * start)
+    return moment, error
+
+
+def _empty_shell(parents: int, entries: int) -> Shell:
+    return (
+        np.empty(parents, dtype=np.int32),
+        np.empty(parents),
+        np.zeros(parents + 1, dtype=np.int64),
+        np.empty(entries, dtype=np.int64),
+    )
+
+
+def _slices(count: int) -> list[tuple[int, int]]:
+    """One slice of a small shell, two of a large one."""
+    if count < THREADED_FROM:
+        return [(0, count)]
+    return [(0, count // 2), (count // 2, count)]
+
+
+def _each(action: Callable[..., Any], jobs: Sequence[tuple[int, ...]]) -> list[Any]:
+    """``action`` on every job, side by side when there are several (the kernels hold no lock)."""
+    if len(jobs) == 1:
+        return [action(*jobs[0])]
+    with ThreadPoolExecutor(len(jobs)) as pool:
+        return list(pool.map(lambda job: action(*job), jobs))
 
 
 @njit(cache=True, nogil=True)
