@@ -14,7 +14,7 @@ chi         2/Omega sum |ell_n| bound_n
 transform   8 u log2(M) sqrt(M) |c|_2 (Higham 2002, Theorem 24.2, M the length of the FFT)
 axis        16-point Lagrange interpolation on a grid at least four times finer than needed: the
             error of a wave of phase step a is at most a^16 (15!!/2^8)^2 / 16!, summed over |c_n|
-rounding    of the energies: 8 u |x| times the largest slope, 2/Omega sum |c_n| n h
+rounding    of the energies: 8 u (|x| + origin) times the largest slope, 2/Omega sum |c_n| n h
 """
 
 from __future__ import annotations
@@ -124,7 +124,7 @@ def _alias(
         _, error, largest = kink_correction(shape.gamma / period)
         free = FIT_REACH * period - furthest - light
         beyond = cubic / free**2 if cubic else 0.0
-        return (error + largest * (energies.outside + left + beyond)) / period
+        return shape.mass * (error + largest * (energies.outside + left + beyond)) / period
     gap = period - furthest - light
     largest = 2.0 * shape.peak + 1.0 / period
     images = 2.2 * shape.peak * left
@@ -140,10 +140,12 @@ def density(
     shape: Broadening,
     sampling: Sampling,
     energies: Floats,
+    origin: float = 0.0,
 ) -> Density:
     """Evaluate the band at the given energies (any order).
 
-    ``chi(step, count)`` supplies the correlation function, so that a caller can keep it.
+    ``chi(step, count)`` supplies the correlation function, so that a caller can keep it. ``origin``
+    is the largest number the energies are differences of: its rounding moves them.
     """
     step, count = sampling.step, sampling.count
     correlation = chi(step, count)
@@ -171,7 +173,7 @@ def density(
     rounding = float((weights * size) @ (correlation.bound + 64.0 * UNIT_ROUNDOFF)) / period
     norm = math.sqrt(2.0 * length) * float(np.linalg.norm(c)) / period
     transform = lebesgue * (8.0 * UNIT_ROUNDOFF * math.log2(length) + 40.0 * UNIT_ROUNDOFF) * norm
-    top = max(abs(sampling.low), abs(sampling.high), period)
+    top = max(abs(sampling.low), abs(sampling.high), period) + abs(origin)
     slope = float(amount @ times) * 8.0 * UNIT_ROUNDOFF * top
     bound = sampling.error + wave + rounding + transform + slope
     if not math.isfinite(bound):

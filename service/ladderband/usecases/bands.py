@@ -18,6 +18,7 @@ from ladderband.numerics.band import (
     reference_density,
 )
 from ladderband.numerics.errors import DomainError
+from ladderband.numerics.line_list import LineList
 from ladderband.numerics.line_shape import Bath, Broadening, InstrumentFunction, broadening
 from ladderband.numerics.moments import vertical_energy
 from ladderband.numerics.reversal import reversed_transition
@@ -25,9 +26,15 @@ from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Process, Transition
 from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
 from ladderband.usecases.limits import Limits
+from ladderband.usecases.lines import LinesQuestion, lines
 
 MAX_TIMES = 2**18
 """Samples of the correlation function in one band: a width of 1/20000 of the band's range."""
+
+LABEL_THRESHOLD = 0.01
+"""Weakest line labelled, as a share of the strongest."""
+LABEL_SECONDS = 0.5
+"""Work spent on the labels of one species."""
 
 ADVICE = "Give wider lines, a shorter axis, a larger tolerance or fewer bands in one request."
 
@@ -74,7 +81,8 @@ class BandsQuestion:
     """Bands of a mixture of species at one or several temperatures, on one axis.
 
     ``temperatures_k`` empty: the species' own. ``both_directions`` adds the reverse process.
-    ``tolerance`` is the bound aimed at, relative to the maximum.
+    ``tolerance`` is the bound aimed at, relative to the maximum. ``label_lines``: so many of the
+    strongest lines on the axis, of each species, ride along for labels.
     """
 
     species: tuple[Species, ...]
@@ -84,6 +92,7 @@ class BandsQuestion:
     temperatures_k: tuple[float, ...] = ()
     both_directions: bool = False
     tolerance: float = 1e-6
+    label_lines: int = 0
 
 
 @dataclass(frozen=True)
@@ -110,7 +119,8 @@ class Band:
 
     ``moments`` are those of the lines (closed form, bath's shift included); ``moments_on_axis``
     those of the broadened band over the axis given (None where there is no intensity).
-    ``range_cm1`` holds all but 1e-6 of the lines.
+    ``range_cm1`` holds all but 1e-6 of the lines. ``lines``: one list a species when labels were
+    asked for, without the shift of a bath; its completeness says how far it looked.
     """
 
     process: Process
@@ -122,6 +132,7 @@ class Band:
     positions: tuple[Positions, ...]
     strength: Strength
     range_cm1: tuple[float, float]
+    lines: tuple[LineList, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -218,6 +229,7 @@ def estimate_seconds(question: BandsQuestion) -> float:
     """
     bands_count = max(1, len(question.temperatures_k)) * (2 if question.both_directions else 1)
     total = 2e-7 * len(question.axis.values) * len(question.species)
+    total += 0.1 * len(question.species) * (question.label_lines > 0)
     for species in question.species:
         transition = species.transition
         n = len(transition.modes)
@@ -232,7 +244,7 @@ def estimate_seconds(question: BandsQuestion) -> float:
 
 def seconds_a_time(n: int, mixed: bool) -> float:
     """Seconds of one time point of n modes, all mixed or none."""
-    return 2e-6 + (4.5e-10 * n**3 + 6e-8 * n**2 if mixed else 6e-9 * n)
+    return 2e-6 + (3.5e-10 * n**3 + 1.2e-8 * n**2 if mixed else 6e-9 * n)
 
 
 def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...]) -> _Part:
@@ -288,7 +300,23 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
         tuple(_positions(part) for part in parts),
         _mixture_strength(question, process, parts),
         _range(parts),
+        tuple(_labels(question, part.species.transition, deadline) for part in parts)
+        if question.label_lines
+        else (),
     )
+
+
+def _labels(question: BandsQuestion, transition: Transition, deadline: Deadline) -> LineList:
+    """The strongest lines on the axis, as far as a short enumeration finds them."""
+    wavenumbers = question.axis.wavenumbers
+    asked = LinesQuestion(
+        transition,
+        threshold=LABEL_THRESHOLD,
+        max_lines=question.label_lines,
+        low_cm1=float(wavenumbers.min()),
+        high_cm1=float(wavenumbers.max()),
+    )
+    return lines(asked, Limits(work_s=LABEL_SECONDS), deadline).lines
 
 
 def _density(part: _Part, deadline: Deadline) -> Density:
@@ -298,6 +326,7 @@ def _density(part: _Part, deadline: Deadline) -> Density:
         part.shape,
         part.sampling,
         part.energies,
+        float(np.abs(part.energies).max()) + abs(part.species.transition.origin_cm1),
     )
 
 
