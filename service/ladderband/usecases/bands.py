@@ -376,14 +376,19 @@ def _positions(part: _Part) -> Positions:
 
 def _moments_on_axis(wavenumbers: Floats, plain: Floats) -> BandMoments | None:
     """Trapezoidal moments of the density over the axis, in cm^-1."""
-    order = np.argsort(wavenumbers)
-    x, y = wavenumbers[order], plain[order]
-    area = float(np.trapezoid(y, x)) if len(x) > 1 else 0.0
+    steps = np.abs(np.diff(wavenumbers))
+    weights = np.zeros(len(plain))
+    weights[:-1] += 0.5 * steps
+    weights[1:] += 0.5 * steps
+    weights *= plain
+    area = float(weights.sum())
     if area <= 1e-9:
         return None
-    mean = float(np.trapezoid(y * x, x)) / area
-    variance = float(np.trapezoid(y * (x - mean) ** 2, x)) / area
-    third = float(np.trapezoid(y * (x - mean) ** 3, x)) / area
+    mean = float(weights @ wavenumbers) / area
+    off = wavenumbers - mean
+    square = off * off
+    variance = float(weights @ square) / area
+    third = float(weights @ (square * off)) / area
     deviation = math.sqrt(max(variance, 0.0))
     return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
 
