@@ -83,7 +83,7 @@ def plan_sampling(
 
     ``allowed`` is the density the sampling may be wrong by; the error really reached is returned.
     """
-    left = min(0.01, 0.03 * allowed / shape.kernel_top)
+    left = min(0.01, max(0.03 * allowed / shape.kernel_top, 1e-300))
     light = shape.light_reach(left)
     low, high = axis_low, axis_high
     cubic = shape.cubic_tail

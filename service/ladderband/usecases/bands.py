@@ -17,7 +17,7 @@ from ladderband.numerics.band import (
     plan_sampling,
     reference_density,
 )
-from ladderband.numerics.errors import DomainError
+from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.numerics.line_list import LineList
 from ladderband.numerics.line_shape import (
     FIT_REACH,
@@ -31,7 +31,7 @@ from ladderband.numerics.reversal import reversed_transition
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Process, Transition
 from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
-from ladderband.usecases.limits import Limits
+from ladderband.usecases.limits import CostLimitExceeded, Limits
 from ladderband.usecases.lines import LinesQuestion, lines
 
 MAX_TIMES = 2**18
@@ -39,8 +39,10 @@ MAX_TIMES = 2**18
 
 LABEL_THRESHOLD = 0.01
 """Weakest line labelled, as a share of the strongest."""
-LABEL_SECONDS = 0.5
+LABEL_SECONDS = 0.1
 """Work spent on the labels of one species."""
+LABEL_DEADLINE_S = 1.0
+"""Time after which a band goes without labels."""
 
 ADVICE = "Give wider lines, a shorter axis, a larger tolerance or fewer bands in one request."
 
@@ -183,6 +185,8 @@ def bands(question: BandsQuestion, limits: Limits, deadline: Deadline) -> BandsA
         The deadline passed.
     """
     groups = _groups(question)
+    for group in groups:  # what a scale refuses is refused before any work
+        _factors(question, group[0].transition.process, 1.0)
     limits.admit(estimate_seconds(question), ADVICE)
     planned = []
     for group in groups:
@@ -198,6 +202,11 @@ def bands(question: BandsQuestion, limits: Limits, deadline: Deadline) -> BandsA
         _stokes_shifts(question, found),
         _warnings(question, found),
     )
+
+
+def _factors(question: BandsQuestion, process: Process, moment2: float) -> Floats:
+    axis = question.axis
+    return scale_factors(question.scale, process, axis.wavenumbers, axis.jacobian, moment2)
 
 
 def _groups(question: BandsQuestion) -> list[tuple[Species, ...]]:
@@ -291,9 +300,7 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
     plain, total, bound = np.zeros((3, len(axis.values)))
     for part in parts:
         found = _density(part, deadline)
-        factors = part.share * scale_factors(
-            question.scale, process, axis.wavenumbers, axis.jacobian, part.kept.modes.total
-        )
+        factors = part.share * _factors(question, process, part.kept.modes.total)
         plain += part.share * found.value
         total += factors * found.value
         bound += factors * found.bound + 40.0 * UNIT_ROUNDOFF * np.abs(factors * found.value)
@@ -309,23 +316,31 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
         tuple(_positions(part) for part in parts),
         _mixture_strength(question, process, parts),
         _range(parts),
-        tuple(_labels(question, part.species.transition, deadline) for part in parts)
-        if question.label_lines
-        else (),
+        _labels(question, parts, deadline) if question.label_lines else (),
     )
 
 
-def _labels(question: BandsQuestion, transition: Transition, deadline: Deadline) -> LineList:
-    """The strongest lines on the axis, as far as a short enumeration finds them."""
+def _labels(
+    question: BandsQuestion, parts: list[_Part], deadline: Deadline
+) -> tuple[LineList, ...]:
+    """The strongest lines on the axis, one list a species; none where a short look finds none."""
     wavenumbers = question.axis.wavenumbers
-    asked = LinesQuestion(
-        transition,
-        threshold=LABEL_THRESHOLD,
-        max_lines=question.label_lines,
-        low_cm1=float(wavenumbers.min()),
-        high_cm1=float(wavenumbers.max()),
-    )
-    return lines(asked, Limits(work_s=LABEL_SECONDS), deadline).lines
+    found = []
+    for part in parts:
+        asked = LinesQuestion(
+            part.species.transition,
+            threshold=LABEL_THRESHOLD,
+            max_lines=question.label_lines,
+            low_cm1=float(wavenumbers.min()),
+            high_cm1=float(wavenumbers.max()),
+        )
+        short = min(deadline, Deadline.after(LABEL_DEADLINE_S), key=lambda one: one.at)
+        try:
+            found.append(lines(asked, Limits(work_s=LABEL_SECONDS), short).lines)
+        except (CostLimitExceeded, DeadlineExceeded, DomainError, PrecisionNotReached):
+            deadline.check()
+            return ()
+    return tuple(found)
 
 
 def _density(part: _Part, deadline: Deadline) -> Density:
@@ -446,6 +461,11 @@ def _warnings(question: BandsQuestion, found: tuple[Band, ...]) -> tuple[str, ..
                 f"The axis holds {100.0 * area:.3g} % of the {band.process} band's area; "
                 "the area is 1 over all wavenumbers."
             )
+    if question.label_lines and not all(band.lines for band in found):
+        notes.append(
+            "No labels: the band has too many lines for a short enumeration. POST /v1/lines gives "
+            "more time to it."
+        )
     if question.scale in ("molar_absorption_coefficient", "cross_section", "photon_rate") and any(
         species.transition.moment is None for species in question.species
     ):
