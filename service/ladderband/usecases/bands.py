@@ -256,13 +256,23 @@ def estimate_seconds(question: BandsQuestion) -> float:
         )
         period /= FIT_REACH if shape.gamma else 1.0
         times = min(shape.end(1e-9 * shape.peak) * period / (2.0 * math.pi), float(MAX_TIMES))
-        total += 0.003 + 2e-8 * n**3 * mixed + times * seconds_a_time(n, mixed)
+        total += (
+            0.003
+            + 2e-8 * n**3 * mixed
+            + times * seconds_a_time(n, mixed=mixed, slopes=_has_slopes(transition))
+        )
     return len(groups) * total
 
 
-def seconds_a_time(n: int, mixed: bool) -> float:
-    """Seconds of one time point of n modes, all mixed or none."""
-    return 1e-6 + (3.5e-10 * n**3 + 1.2e-8 * n**2 if mixed else 6e-9 * n)
+def seconds_a_time(n: int, *, mixed: bool, slopes: bool) -> float:
+    """Seconds of one time point of n modes, all mixed or none, with a moment that varies or not."""
+    if mixed:
+        return 1e-6 + (7e-7 if slopes else 2.5e-7) * n + 1.2e-8 * n**2 + 3.5e-10 * n**3
+    return 1e-6 + (8e-8 if slopes else 6e-9) * n
+
+
+def _has_slopes(transition: Transition) -> bool:
+    return transition.moment is not None and bool(transition.moment.slopes_debye.any())
 
 
 def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...]) -> _Part:
@@ -288,9 +298,12 @@ def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...])
 def _seconds_left(part: _Part) -> float:
     missing = max(0, part.sampling.count - part.kept.have(part.sampling.step))
     modes = part.kept.modes
-    each = sum(seconds_a_time(len(block), mixed=True) for block in modes.mixed)
+    each = sum(
+        seconds_a_time(len(block), mixed=True, slopes=block.has_slopes) for block in modes.mixed
+    )
     if modes.uncoupled is not None:
-        each += seconds_a_time(len(modes.uncoupled.g), mixed=False)
+        slopes = bool(modes.uncoupled.slopes.any())
+        each += seconds_a_time(len(modes.uncoupled.g), mixed=False, slopes=slopes)
     return missing * each + 3e-7 * part.sampling.count + 2e-7 * len(part.energies)
 
 
