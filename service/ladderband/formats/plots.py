@@ -20,6 +20,8 @@ LABEL_PX = (34.0, 13.0)  # least distance of two labels: across, up
 MAX_STICKS = 4000
 MAX_CELLS = 400_000
 MAX_WRITTEN = 12
+MAX_LEVELS = 40  # of each state; more cannot be told apart on a plot, and each costs time
+MAX_CURVE_POINTS = 800
 
 
 # --- sticks ---
@@ -183,10 +185,13 @@ def _panel(
 ) -> None:
     ax.grid(visible=False)
     spacing = levels[1] - levels[0] if len(levels) > 1 else 2.0 * levels[0]
+    thin = -(-len(q) // MAX_CURVE_POINTS)
+    q, potential, functions = q[::thin], potential[::thin], functions[:, ::thin]
     top = levels[-1] + 1.2 * spacing
     ax.plot(q, np.where(potential <= top, potential, np.nan), color=colour, linewidth=1.8)
     scale = 0.62 * spacing / max(float(np.abs(functions).max()), 1e-300)
-    for level, function in zip(levels, functions, strict=True):
+    step = -(-len(levels) // MAX_LEVELS)
+    for level, function in zip(levels[::step], functions[::step], strict=True):
         ax.plot(q, level + scale * function, color=colour, linewidth=1.0)
         ax.fill_between(q, level, level + scale * function, color=colour, alpha=0.16, linewidth=0)
     ax.set_ylim(0.0, top)

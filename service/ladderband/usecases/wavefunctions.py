@@ -77,6 +77,8 @@ def wavefunctions(
     (proven), plus what the rounding of the initial state's coordinate does (|phi'| <= sqrt(2v+2)
     pi^-1/4).
     """
+    levels = question.v_initial_max + question.v_final_max + 2
+    limits.admit_table(levels * question.points)
     limits.admit(estimate_seconds(question), "Ask for fewer points or levels.")
     deadline.check()
     mode = question.mode
