@@ -64,8 +64,6 @@ class Density:
 
     value: Floats
     bound: float
-    low: float
-    high: float
 
 
 def reference_density(energies: EnergyRange, shape: Broadening) -> float:
@@ -178,7 +176,7 @@ def density(
     bound = sampling.error + wave + rounding + transform + slope
     if not math.isfinite(bound):
         raise PrecisionNotReached("The band could not be bounded.", "finite", "infinite")
-    return Density(value, bound * (1.0 + 1e-9), sampling.low, sampling.high)
+    return Density(value, bound * (1.0 + 1e-9))
 
 
 def interpolated(grid: Floats, place: Floats) -> tuple[Floats, float]:

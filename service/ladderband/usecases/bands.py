@@ -26,7 +26,7 @@ from ladderband.numerics.line_shape import (
     InstrumentFunction,
     broadening,
 )
-from ladderband.numerics.moments import vertical_energy
+from ladderband.numerics.moments import skewness, vertical_energy
 from ladderband.numerics.reversal import reversed_transition
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Process, Transition
@@ -390,7 +390,7 @@ def _mixture_moments(question: BandsQuestion, parts: list[_Part]) -> BandMoments
     variance = float(weights @ (variances + off**2))
     third = float(weights @ (thirds + 3.0 * off * variances + off**3))
     deviation = math.sqrt(max(variance, 0.0))
-    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+    return BandMoments(mean, deviation, skewness(third, deviation))
 
 
 def _positions(part: _Part) -> Positions:
@@ -418,7 +418,7 @@ def _moments_on_axis(wavenumbers: Floats, plain: Floats) -> BandMoments | None:
     variance = float(weights @ square) / area
     third = float(weights @ (square * off)) / area
     deviation = math.sqrt(max(variance, 0.0))
-    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+    return BandMoments(mean, deviation, skewness(third, deviation))
 
 
 def _mixture_strength(question: BandsQuestion, process: Process, parts: list[_Part]) -> Strength:
