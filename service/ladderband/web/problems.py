@@ -58,10 +58,6 @@ class AlreadyHeld(WebError):
     """If-None-Match names the answer, and the method is not GET."""
 
 
-class Busy(WebError):
-    """All places for dear requests are taken."""
-
-
 @dataclass(frozen=True, slots=True)
 class Problem:
     """Slug, status, title and the meaning shown on the problem's page."""
@@ -151,10 +147,6 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "deadline", 503, "The calculation was stopped at its time limit",
         "The work took longer than it was estimated to. Nothing was kept.",
     ),
-    Busy: Problem(
-        "busy", 503, "All places for calculations are taken",
-        "Try again after the seconds in Retry-After.", _web,
-    ),
 }  # fmt: skip
 
 HTTP_PROBLEMS: dict[int, Problem] = {
@@ -177,7 +169,9 @@ HTTP_PROBLEMS: dict[int, Problem] = {
         "internal", 500, "The service failed",
         "A fault of the service. Report the instance id; the log holds the rest.",
     ),
-    503: PROBLEMS[Busy],
+    503: Problem(
+        "unavailable", 503, "The service cannot answer now", "Try again after Retry-After seconds."
+    ),
 }  # fmt: skip
 
 
