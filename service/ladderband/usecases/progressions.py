@@ -53,11 +53,13 @@ def progressions(question: ProgressionsQuestion, limits: Limits, deadline: Deadl
     advice = "Give v_final_max, a lower temperature, a higher threshold or fewer modes."
     limits.admit(estimate_seconds(question), advice)
     sticks = [_mode_sticks(question, mode, deadline) for mode in question.transition.modes]
-    limits.admit(joint_seconds(sticks, question.threshold), advice)
+    if len(sticks) > 1:
+        limits.admit(joint_seconds(sticks, question.threshold), advice)
     found = uncoupled_lines(
         question.transition, sticks, question.threshold, question.max_lines, deadline
     )
-    return replace(found, warnings=_warnings(question, sticks))
+    notes = _warnings(question, sticks)
+    return replace(found, warnings=notes) if notes else found
 
 
 def _check_uncoupled(transition: Transition) -> None:
@@ -122,15 +124,17 @@ def _table_shape(question: ProgressionsQuestion, mode: Mode) -> tuple[int, int]:
 
 
 def _warnings(question: ProgressionsQuestion, sticks: list[ModeSticks]) -> tuple[str, ...]:
-    chosen = question.v_final_max is None or question.v_initial_max is None
+    """Only where the service chose the quanta: what the client chose needs no warning."""
+    if question.v_final_max is not None or question.v_initial_max is not None:
+        return ()
     short = [
         str(index)
         for index, mode in enumerate(sticks, start=1)
-        if chosen and mode.missing_at_most > question.tolerance
+        if mode.missing_at_most > question.tolerance
     ]
     if not short:
         return ()
     return (
-        f"Mode {', '.join(short)}: {QUANTA_MAX} quanta, the most a table holds, or the quanta "
-        "given, leave out more than the tolerance; completeness tells how much.",
+        f"Mode {', '.join(short)}: {QUANTA_MAX} quanta, the most a table holds, leave out more than "
+        "the tolerance; completeness tells how much.",
     )
