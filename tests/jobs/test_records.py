@@ -16,6 +16,7 @@ from ladderband.jobs import claims, records
 from ladderband.jobs.claims import Ticket
 from ladderband.jobs.database import Database, StorageUnavailable, described
 from ladderband.jobs.errors import JobFinished, JobNotFound, QueueFull, TokenMismatch
+from ladderband.jobs.kinds import SWEEPS
 from ladderband.jobs.submissions import (
     JobView,
     NewJob,
@@ -33,7 +34,7 @@ from ladderband.jobs.submissions import (
 def new(number: int = 0, **changes: object) -> NewJob:
     request = canonical({"number": number})
     values: dict[str, object] = {
-        "kind": "sleep",
+        "kind": SWEEPS if changes.get("total", 1) != 1 else "sleep",
         "request": request,
         "digest": request_digest("sleep", request, "1"),
     }

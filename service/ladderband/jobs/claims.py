@@ -26,6 +26,7 @@ from sqlalchemy.engine import Connection, Row
 
 from ladderband.jobs.database import Database
 from ladderband.jobs.errors import Problem
+from ladderband.jobs.kinds import SWEEPS
 from ladderband.jobs.records import OPEN_STATES, engine, job, output, shard, turn
 from ladderband.jobs.submissions import end, lock
 
@@ -166,8 +167,8 @@ def _count_turn(connection: Connection, row: Row[*tuple[Any, ...]], now: float) 
 def finish(database: Database, ticket: Ticket, parts: Iterable[bytes], seconds: float) -> bool:
     """Record the shard's output; False when the ticket is no longer valid and all was thrown away.
 
-    The transaction that finishes the last points ends the job, or queues its merge when the points
-    were in several shards. ``seconds`` is the time the work took; it sizes the next shards.
+    The transaction that finishes the last points ends the job, or queues the merge of a sweep.
+    ``seconds`` is the time the work took; it sizes the next shards.
     """
     with database.writing() as connection:
         row = lock(connection, ticket.job_id)
@@ -214,7 +215,7 @@ def _count_points(
     )
     if row.done + count < row.total:
         return
-    if count == row.total:
+    if row.kind != SWEEPS:
         _succeed(connection, row.id, now)
     else:
         _queue_merge(connection, row)
