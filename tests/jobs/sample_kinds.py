@@ -6,8 +6,11 @@ import math
 import os
 import signal
 import time
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
+
+import orjson
 
 from ladderband.jobs.kinds import Kind, Refused
 from ladderband.numerics.accuracy import Deadline
@@ -68,4 +71,11 @@ def _estimate(request: Request) -> float:
 
 def kinds() -> dict[str, Kind]:
     answers = [_add, _sleep, _spin, _crash, _hog, _refuse]
-    return {a.__name__[1:]: Kind(a.__name__[1:], _estimate, a) for a in answers}
+    return {a.__name__[1:]: _kind(a) for a in answers}
+
+
+def _kind(answer: Callable[[Request, Deadline], Request]) -> Kind:
+    def stored(request: Request, deadline: Deadline) -> bytes:
+        return orjson.dumps(answer(request, deadline))
+
+    return Kind(answer.__name__[1:], _estimate, answer, stored)

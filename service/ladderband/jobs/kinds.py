@@ -34,13 +34,16 @@ class Refused(Exception):
 class Kind:
     """One compute resource.
 
-    ``estimate`` checks the request and returns the seconds it is expected to take; ``answer``
-    returns the answer document. Both raise :class:`Refused`.
+    ``estimate`` checks the request and returns the seconds it is expected to take. ``document``
+    answers with the JSON document a sweep collects from; ``stored`` answers with the bytes kept as
+    the result of a single job, in whatever form the owner of the kind can render later. All raise
+    :class:`Refused`.
     """
 
     name: str
     estimate: Callable[[Document], float]
-    answer: Callable[[Document, Deadline], Document]
+    document: Callable[[Document, Deadline], Document]
+    stored: Callable[[Document, Deadline], bytes]
 
 
 Kinds = Mapping[str, Kind]

@@ -11,9 +11,10 @@ import csv
 import io
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, is_dataclass
 from typing import Any
 
+import numpy as np
 import orjson
 
 from ladderband.jobs.errors import SweepError
@@ -205,19 +206,24 @@ def tokens(pointer: str) -> list[str]:
 
 
 def looked_up(document: Any, path: Sequence[str]) -> Any:
-    """The value at a path; raises LookupError with a sentence."""
+    """The value at a path through objects, dataclasses, lists and arrays.
+
+    Raises LookupError with a sentence.
+    """
     value = document
     for token in path:
-        if isinstance(value, list):
+        if isinstance(value, list | tuple | np.ndarray):
             value = value[_index(value, token)]
         elif isinstance(value, dict) and token in value:
             value = value[token]
+        elif is_dataclass(value) and token in {member.name for member in fields(value)}:
+            value = getattr(value, token)
         else:
             raise LookupError(f"there is no member {token!r}.")
     return value
 
 
-def _index(values: list[Any], token: str) -> int:
+def _index(values: Sequence[Any] | np.ndarray[Any, Any], token: str) -> int:
     if not (token.isascii() and token.isdigit()) or int(token) >= len(values):
         raise LookupError(f"{token!r} is not an index of a list of {len(values)}.")
     return int(token)

@@ -49,11 +49,15 @@ def append_point(
 
 
 def collected(answer: Any, pointers: Sequence[str]) -> list[Any]:
-    """The members of an answer; raises LookupError with a sentence when one is missing."""
+    """The members of an answer as plain JSON values.
+
+    Raises LookupError with a sentence when one is missing.
+    """
     found = []
     for pointer in pointers:
         try:
-            found.append(looked_up(answer, tokens(pointer)))
+            value = looked_up(answer, tokens(pointer))
+            found.append(orjson.loads(orjson.dumps(value, option=orjson.OPT_SERIALIZE_NUMPY)))
         except LookupError as error:
             raise LookupError(f"The answer has nothing at {pointer!r}: {error.args[0]}") from error
     return found

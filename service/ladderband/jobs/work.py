@@ -8,7 +8,8 @@ from __future__ import annotations
 
 import logging
 import signal
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from typing import Any
 
 import orjson
@@ -63,17 +64,20 @@ def perform(task: bytes, kinds: Kinds) -> bytes:
         if "values" in document:
             return b"r" + orjson.dumps(_points(document, kinds), option=JSON_OPTIONS)
         kind = kinds[document["kind"]]
-        return b"r" + _answer(kind, document["request"], document["limit_s"])
+        with _limited(kind, document["limit_s"]) as deadline:
+            return b"r" + kind.stored(document["request"], deadline)
     except Refused as refusal:
         return b"p" + orjson.dumps(refusal.problem)
 
 
-def _answer(kind: Kind, request: Document, limit_s: float) -> bytes:
-    """The answer's JSON; the alarm's default action is to end this process."""
+@contextmanager
+def _limited(kind: Kind, limit_s: float) -> Iterator[Deadline]:
+    """The time of one answer is limited twice: by a deadline, which loops look at, and by an alarm
+    whose default action is to end this process. A defect becomes a refusal and a line in the log.
+    """
     signal.setitimer(signal.ITIMER_REAL, limit_s + HARD_LIMIT_S)
     try:
-        answer = kind.answer(request, Deadline.after(limit_s))
-        return orjson.dumps(answer, option=JSON_OPTIONS)
+        yield Deadline.after(limit_s)
     except (Refused, MemoryError):
         raise
     except Exception as error:
@@ -103,7 +107,8 @@ def _one_point(
 ) -> tuple[list[Any], str | None]:
     """The collected values, or why there are none."""
     try:
-        answer = orjson.loads(_answer(kind, request, limit_s))
+        with _limited(kind, limit_s) as deadline:
+            answer = kind.document(request, deadline)
         return collected(answer, collect), None
     except Refused as refusal:
         return [], str(refusal.problem.get("detail") or refusal.problem.get("title"))
