@@ -1,0 +1,97 @@
+"""Reading a JSON body within limits: size, media type, nesting, repeated members.
+
+Flask's own limit cuts a chunked body silently at the limit and passes on the rest as if it were
+whole; and orjson keeps the last of repeated members. Both are checked here.
+"""
+
+from __future__ import annotations
+
+import json
+from typing import Any
+
+import orjson
+from flask import Request
+
+from ladderband.web.problems import BodyTooLarge, MalformedJson, UnsupportedMediaType
+
+BLOCK = 65536
+PLAIN = frozenset({int, float, str, bool, type(None)})
+
+
+def read_json(request: Request, max_bytes: int, max_depth: int) -> Any:
+    """The parsed JSON body of a request.
+
+    Raises
+    ------
+    UnsupportedMediaType, BodyTooLarge, MalformedJson
+        See the classes.
+    """
+    kind = request.mimetype
+    if kind != "application/json" and not kind.endswith("+json"):
+        raise UnsupportedMediaType(
+            f"The media type is {kind[:80] or 'missing'}.", allowed="application/json"
+        )
+    if request.headers.get("Content-Encoding", "identity") != "identity":
+        raise UnsupportedMediaType("Encoded bodies are not read.", allowed="application/json")
+    return parse(read_bytes(request, max_bytes), max_depth)
+
+
+def read_bytes(request: Request, max_bytes: int) -> bytes:
+    """The whole body, of known length or chunked; refused as soon as it is known to be too large."""
+    if request.content_length is not None:
+        if request.content_length > max_bytes:
+            raise _too_large(max_bytes)
+        return request.get_data(cache=False)
+    parts, size = [], 0
+    stream = request.environ["wsgi.input"] if request.environ.get("wsgi.input_terminated") else None
+    while stream is not None and (part := stream.read(BLOCK)):
+        size += len(part)
+        if size > max_bytes:
+            raise _too_large(max_bytes)
+        parts.append(part)
+    return b"".join(parts)
+
+
+def _too_large(max_bytes: int) -> BodyTooLarge:
+    return BodyTooLarge(f"The body is larger than {max_bytes} bytes.", limit_bytes=max_bytes)
+
+
+def parse(raw: bytes, max_depth: int) -> Any:
+    """Parse JSON; every object has each member once and nothing nests deeper than ``max_depth``."""
+    try:
+        value = orjson.loads(raw)
+    except orjson.JSONDecodeError as error:
+        where = f" at line {error.lineno}, column {error.colno}" if raw else ""
+        reason = error.msg.split(":")[0][:120] if raw else "the body is empty"
+        raise MalformedJson(f"This is not JSON: {reason}{where}.") from None
+    members = _count_members(value, max_depth)
+    # A colon outside a string belongs to exactly one member. As many colons as members: none is
+    # repeated. More: one is, or a string holds a colon, and the slow parser tells which.
+    if raw.count(b":") != members:
+        json.loads(raw, object_pairs_hook=_refuse_repeated)
+    return value
+
+
+def _count_members(value: Any, max_depth: int) -> int:
+    members, level = 0, [value]
+    for _ in range(max_depth + 1):
+        inner: list[Any] = []
+        for node in level:
+            if type(node) is dict:
+                members += len(node)
+                inner += [child for child in node.values() if type(child) not in PLAIN]
+            elif type(node) is list and not set(map(type, node)) <= PLAIN:
+                inner += [child for child in node if type(child) not in PLAIN]
+        if not inner:
+            return members
+        level = inner
+    raise MalformedJson(f"The body nests deeper than {max_depth} levels.", limit_depth=max_depth)
+
+
+def _refuse_repeated(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
+    seen: dict[str, Any] = {}
+    for name, value in pairs:
+        if name in seen:
+            raise MalformedJson(f"The member {name[:80]!r} is given more than once in one object.")
+        seen[name] = value
+    return seen

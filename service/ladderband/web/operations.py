@@ -1,0 +1,137 @@
+"""What operators need: health, readiness, metrics, request ids, one JSON log line a request."""
+
+from __future__ import annotations
+
+import logging
+import os
+import re
+import sys
+import time
+import uuid
+from typing import Any
+
+import orjson
+from flask import Blueprint, Flask, Response, current_app, g, request
+from prometheus_client import CollectorRegistry, Counter, Histogram, generate_latest
+from prometheus_client.multiprocess import MultiProcessCollector
+from prometheus_client.registry import REGISTRY
+
+REQUEST_ID = re.compile(r"[A-Za-z0-9._:/+=-]{1,80}")
+METRICS_MEDIA_TYPE = "text/plain; version=0.0.4; charset=utf-8"
+
+_requests = Counter(
+    "ladderband_requests_total", "Requests answered.", ["method", "route", "status"]
+)
+_seconds = Histogram(
+    "ladderband_request_seconds",
+    "Time from the first byte read to the answer's first byte.",
+    ["route"],
+    buckets=(0.001, 0.003, 0.01, 0.03, 0.1, 0.3, 1.0, 3.0, 10.0),
+)
+_children: dict[tuple[str, str, int], tuple[Any, Any]] = {}
+"""Label lookups cost as much as the counting itself; there are few routes and statuses."""
+
+blueprint = Blueprint("operations", __name__)
+
+
+class JsonLines(logging.Formatter):
+    """One log record as one line of JSON."""
+
+    def format(self, record: logging.LogRecord) -> str:
+        line = {
+            "time": time.strftime("%Y-%m-%dT%H:%M:%S", time.gmtime(record.created))
+            + f".{int(record.msecs):03d}Z",
+            "level": record.levelname.lower(),
+            "event": record.getMessage(),
+            **{k: v for k, v in record.__dict__.items() if k in {"instance", "request_id"}},
+        }
+        if record.exc_info:
+            line["traceback"] = self.formatException(record.exc_info)
+        return orjson.dumps(line).decode()
+
+
+def configure_logging() -> None:
+    """Send the package's log records to stderr as JSON lines, once a process."""
+    logger = logging.getLogger("ladderband")
+    if not logger.handlers:
+        handler = logging.StreamHandler(sys.stderr)
+        handler.setFormatter(JsonLines())
+        logger.addHandler(handler)
+        logger.setLevel(logging.INFO)
+
+
+def install(app: Flask, log_requests: bool) -> None:
+    """Count, time and log every request of the app."""
+    configure_logging()
+    app.register_blueprint(blueprint)
+    app.before_request(_begin)
+
+    @app.after_request
+    def finish(response: Response) -> Response:
+        response.headers["X-Request-ID"] = g.request_id
+        elapsed = time.perf_counter() - g.began
+        _count(response.status_code, elapsed)
+        if log_requests:
+            _log_line(response, elapsed)
+        return response
+
+
+def _begin() -> None:
+    g.began = time.perf_counter()
+    given = request.environ.get("HTTP_X_REQUEST_ID", "")
+    g.request_id = given if REQUEST_ID.fullmatch(given) else uuid.uuid4().hex
+
+
+def _route() -> str:
+    return request.url_rule.rule if request.url_rule is not None else "none"
+
+
+def _count(status: int, elapsed: float) -> None:
+    key = (request.method if request.url_rule else "none", _route(), status)
+    child = _children.get(key)
+    if child is None:
+        child = _requests.labels(key[0], key[1], str(status)), _seconds.labels(key[1])
+        _children[key] = child
+    child[0].inc()
+    child[1].observe(elapsed)
+
+
+def _log_line(response: Response, elapsed: float) -> None:
+    line = {
+        "time": time.time(),
+        "level": "info",
+        "event": "request",
+        "request_id": g.request_id,
+        "method": request.method,
+        "route": _route(),
+        "status": response.status_code,
+        "ms": round(1e3 * elapsed, 3),
+        "problem": g.get("problem"),
+        "digest": g.get("digest"),
+    }
+    # one write of one line: whole lines even with many threads
+    os.write(2, orjson.dumps(line, option=orjson.OPT_APPEND_NEWLINE))
+
+
+@blueprint.get("/healthz")
+def healthz() -> Response:
+    """The process answers; touches nothing."""
+    return Response(b'{"status":"ok"}', content_type="application/json")
+
+
+@blueprint.get("/readyz")
+def readyz() -> Response:
+    """Warmed up and willing to work; 503 otherwise."""
+    ready = current_app.config["READY"].is_set()
+    body = b'{"status":"ready"}' if ready else b'{"status":"starting"}'
+    return Response(body, status=200 if ready else 503, content_type="application/json")
+
+
+@blueprint.get("/metrics")
+def metrics() -> Response:
+    """Counters of all workers in the Prometheus text format."""
+    registry = REGISTRY
+    if "PROMETHEUS_MULTIPROC_DIR" in os.environ:
+        registry = CollectorRegistry()
+        MultiProcessCollector(registry)  # type: ignore[no-untyped-call]
+    return Response(generate_latest(registry), content_type=METRICS_MEDIA_TYPE)

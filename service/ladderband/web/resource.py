@@ -1,0 +1,147 @@
+"""One declaration a resource: what it takes, who answers, how the answer looks.
+
+To add a resource (four steps):
+
+1. ``usecases/NAME.py``: a frozen ``Question``, a frozen answer, ``answer(question, limits,
+   deadline)``.
+2. ``schemas/NAME.py``: a ``RequestSchema`` whose ``build`` makes the question, an ``AnswerSchema``
+   that describes the answer, and ``NAME_members(question, answer)``: its JSON members, arrays as
+   numpy arrays. ``warnings``, ``service_version`` and ``request_digest`` are added here.
+3. ``web/NAME.py``: one ``Resource(...)`` (see ``web/wavefunctions.py``); a renderer for each format
+   beside JSON: a function of (sheet, question, answer) to bytes or an iterator of bytes.
+4. Add it to ``RESOURCES`` in ``web/resources.py`` and run ``ladderband describe``.
+
+Routing, limits, negotiation, digest, ETag, problem documents, metrics, log line, OpenAPI and the
+tests of its examples follow from the declaration.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Any, Generic, TypeVar
+
+from flask import Blueprint, Response, current_app, g, request
+
+from ladderband import __version__
+from ladderband.formats.json_stream import json_chunks
+from ladderband.formats.sheet import Sheet
+from ladderband.numerics.accuracy import Deadline
+from ladderband.schemas.base import AnswerSchema, Loaded, RequestSchema
+from ladderband.schemas.query import QuerySchema, ViewQuery
+from ladderband.settings import Settings
+from ladderband.usecases.limits import Limits
+from ladderband.web.body import read_json
+from ladderband.web.digest import request_digest
+from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
+from ladderband.web.problems import AlreadyHeld
+
+Q = TypeVar("Q")
+A = TypeVar("A")
+Body = bytes | Iterable[bytes]
+VIEW = ViewQuery()
+VIEW_NAMES = frozenset(VIEW.fields)
+NO_VIEW: dict[str, Any] = VIEW.read({})
+
+
+@dataclass(frozen=True)
+class Resource(Generic[Q, A]):
+    """A resource that answers one kind of question; see the recipe above."""
+
+    path: str
+    operation_id: str
+    """camelCase; generated clients name their function after it."""
+    summary: str
+    description: str
+    request: RequestSchema[Q]
+    response: type[AnswerSchema]
+    use_case: Callable[[Q, Limits, Deadline], A]
+    members: Callable[[Q, A], dict[str, Any]]
+    formats: Mapping[str, Callable[[Sheet, Q, A], Body]] = field(default_factory=dict)
+    """Renderers beside JSON, by a name of ``negotiation.MEDIA_TYPES``."""
+    examples: Mapping[str, Mapping[str, Any]] = field(default_factory=dict)
+    """Request bodies by name; each is published and run as a test."""
+    short_form: QuerySchema | None = None
+    """Also answer GET, with the body written as a query string."""
+
+    @property
+    def offered(self) -> tuple[str, ...]:
+        """Names of all formats, JSON first."""
+        return ("json", *self.formats)
+
+    def from_body(self) -> Response:
+        """Answer a POST."""
+        settings: Settings = current_app.config["SETTINGS"]
+        body = read_json(request, settings.max_body_bytes, settings.max_json_depth)
+        return self.answer(self.request.read(body), _view())
+
+    def from_query(self) -> Response:
+        """Answer a GET in the short form."""
+        assert self.short_form is not None
+        names = {k: v for k, v in request.args.to_dict(flat=False).items() if k not in VIEW_NAMES}
+        body = self.short_form.body(self.short_form.read(names))
+        return self.answer(self.request.read(body), _view())
+
+    def answer(self, loaded: Loaded[Q], view: dict[str, Any]) -> Response:
+        """Compute, unless the client holds the answer already, and render."""
+        name = chosen_format(request, self.offered, view.get("format"))
+        digest = request_digest(self.path, loaded.question)
+        g.digest = digest
+        tag = digest if name == "json" else _tag_of_view(digest, name, view)
+        if tag in request.if_none_match:
+            return _not_modified(tag)
+        limits: Limits = current_app.config["LIMITS"]
+        deadline = Deadline.after(current_app.config["SETTINGS"].deadline_s)
+        answer = self.use_case(loaded.question, limits, deadline)
+        warnings = [*loaded.warnings, *getattr(answer, "warnings", ())]
+        if name == "json":
+            body: Body = self._json(loaded.question, answer, warnings, digest)
+        else:
+            sheet = Sheet.of(self.summary, digest, warnings, view)
+            body = self.formats[name](sheet, loaded.question, answer)
+        return _response(body, name, tag)
+
+    def _json(self, question: Q, answer: A, warnings: list[str], digest: str) -> Body:
+        members = self.members(question, answer)
+        members["warnings"] = warnings
+        members["service_version"] = __version__
+        members["request_digest"] = digest
+        return json_chunks(members)
+
+
+def _view() -> dict[str, Any]:
+    if not request.query_string:
+        return NO_VIEW
+    given = request.args.to_dict(flat=False)
+    if request.method == "POST":
+        return VIEW.read(given)  # a POST has no other parameters: unknown ones are refused
+    return VIEW.read({name: values for name, values in given.items() if name in VIEW_NAMES})
+
+
+def _tag_of_view(digest: str, name: str, view: dict[str, Any]) -> str:
+    return f"{digest}-{name}-{request_digest(name, view)[:8]}"
+
+
+def _not_modified(tag: str) -> Response:
+    if request.method not in ("GET", "HEAD"):  # RFC 9110, section 13.1.2
+        raise AlreadyHeld("If-None-Match names the answer to this request.", etag=tag)
+    response = Response(status=304)
+    response.set_etag(tag)
+    return response
+
+
+def _response(body: Body, name: str, tag: str) -> Response:
+    response = Response(body, content_type=MEDIA_TYPES[name])
+    response.headers["ETag"] = f'"{tag}"'
+    response.headers["Vary"] = "Accept"
+    response.headers["Cache-Control"] = "private, max-age=0, must-revalidate"
+    return response
+
+
+def blueprint_of(resource: Resource[Any, Any]) -> Blueprint:
+    """The routes of a resource."""
+    blueprint = Blueprint(resource.operation_id, __name__)
+    blueprint.add_url_rule(resource.path, "post", resource.from_body, methods=["POST"])
+    if resource.short_form is not None:
+        blueprint.add_url_rule(resource.path, "get", resource.from_query, methods=["GET"])
+    return blueprint
