@@ -115,7 +115,7 @@ def test_a_crash_ends_its_job_and_no_worker(database: Database, cluster: Cluster
     poison = put(database, "crash", {})
     with at_work(database, cluster):
         found = ended(database, poison, 60)
-        assert (found.problem or {})["type"] == "compute-crashed"
+        assert (found.problem or {})["type"] == "/problems/compute-crashed"
         after = put(database, "add", {"a": 1, "b": 2})
         assert ended(database, after).state == "succeeded"
     assert all(process.poll() is None for process in cluster.workers)

@@ -96,8 +96,8 @@ def test_time_and_memory_limits_are_enforced(database: Database) -> None:
     slow = put(database, "sleep", {"seconds": 60})
     hungry = put(database, "hog", {"bytes": 2**33})
     with running(database, limit_s=0.2):
-        assert (ended(database, hungry).problem or {})["type"] == "memory-limit"
-        assert (ended(database, slow).problem or {})["type"] == "deadline"
+        assert (ended(database, hungry).problem or {})["type"] == "/problems/memory-limit"
+        assert (ended(database, slow).problem or {})["type"] == "/problems/deadline"
         after = put(database, "add", {"a": 1, "b": 1})
         assert ended(database, after).state == "succeeded"
 

@@ -246,7 +246,7 @@ def test_a_shard_that_crashes_three_times_fails_its_job_only(database: Database)
     ended = view(database, poison.id)
     assert ended.state == "failed"
     assert ended.problem is not None
-    assert ended.problem["type"] == "compute-crashed"
+    assert ended.problem["type"] == "/problems/compute-crashed"
     assert "died 3 times while working on point 0 (signal 11)" in ended.problem["detail"]
     other = put(database, 2)
     claims.finish(database, take(database), [b""], 0.1)

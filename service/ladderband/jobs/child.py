@@ -61,7 +61,7 @@ def serve(pipe: Connection, kinds_reference: str) -> None:
 def _memory_problem() -> dict[str, object]:
     limit = resource.getrlimit(resource.RLIMIT_DATA)[0]
     return {
-        "type": "memory-limit",
+        "type": "/problems/memory-limit",
         "title": "Out of memory",
         "status": 422,
         "detail": (

@@ -290,7 +290,7 @@ def _crash_problem(ticket: Ticket, count: int, reason: str) -> Problem:
         else (f"one of the points {ticket.start} to {ticket.stop - 1}")
     )
     return {
-        "type": "compute-crashed",
+        "type": "/problems/compute-crashed",
         "title": "The computation crashed",
         "status": 500,
         "detail": (

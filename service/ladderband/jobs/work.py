@@ -24,8 +24,8 @@ HARD_LIMIT_S = 2.0
 """Time past the deadline after which the system ends the process, whatever it is doing."""
 
 INTERNAL = {
-    "type": "about:blank",
-    "title": "Internal error",
+    "type": "/problems/internal",
+    "title": "The service failed",
     "status": 500,
     "detail": "The computation failed for a reason of the service's own; its log tells more.",
 }

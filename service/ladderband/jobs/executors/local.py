@@ -104,7 +104,7 @@ def _death_reason(code: int) -> str:
 
 def _time_problem() -> dict[str, object]:
     return {
-        "type": "deadline",
+        "type": "/problems/deadline",
         "title": "Time limit reached",
         "status": 503,
         "detail": "The computation did not end within its time limit and was stopped.",
