@@ -1,33 +1,37 @@
-"""Shared fixtures and the header that names the numeric backend."""
+"""Shared fixtures: the application in this process, and the whole service on a free port."""
 
 from __future__ import annotations
 
 import os
-import platform
+from collections.abc import Iterator
 
-# one thread a process: the tests measure correctness, and BLAS threads fight over two cores
+import pytest
+
+from live_service import KERNELS, LiveServer, serving
+
+# before anything imports numpy or numba; kernels compiled by one test run serve the next
 for _name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS"):
     os.environ.setdefault(_name, "1")
-
-import flint
-import mpmath
-import numba
-import numpy as np
-import pytest
-import scipy
+os.environ.setdefault("NUMBA_CACHE_DIR", str(KERNELS / "kernels"))
 
 
-def pytest_report_header() -> list[str]:
-    return [
-        f"numerics: Python {platform.python_version()}, numpy {np.__version__}, "
-        f"scipy {scipy.__version__}, numba {numba.__version__}, python-flint {flint.__version__}, "
-        f"mpmath {mpmath.__version__} ({mpmath.libmp.BACKEND})"
-    ]
+@pytest.fixture(scope="session")
+def live_server() -> Iterator[LiveServer]:
+    """The service on a free port, for the whole test session."""
+    with serving() as server:
+        yield server
 
 
-@pytest.fixture(autouse=True)
-def no_precision_leak():
-    """Process-global precision is as it was: nothing in the service may leave it changed."""
-    before = flint.ctx.prec, flint.ctx.cap, mpmath.mp.prec
-    yield
-    assert (flint.ctx.prec, flint.ctx.cap, mpmath.mp.prec) == before
+@pytest.fixture(scope="session")
+def app():
+    """The application in this process."""
+    from ladderband.settings import Settings
+    from ladderband.web.app import create_app
+
+    return create_app(Settings(log_requests=False))
+
+
+@pytest.fixture
+def client(app):
+    """A client of the application in this process."""
+    return app.test_client()

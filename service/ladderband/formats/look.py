@@ -120,6 +120,6 @@ def axes(figure: Figure, look: Look, *place: Any, **shared: Any) -> Axes:
     ax.set_axisbelow(True)
     ax.xaxis.label.set_color(look.ink)
     ax.yaxis.label.set_color(look.ink)
-    ax.xaxis.label.set_size(9.5)
-    ax.yaxis.label.set_size(9.5)
+    ax.xaxis.label.set_fontsize(9.5)
+    ax.yaxis.label.set_fontsize(9.5)
     return ax

@@ -97,7 +97,6 @@ def ball_table(
     factors = [flint.arb(1)]  # sqrt(n!)
     for n in range(1, length):
         factors.append(factors[-1] * root[n])
-    raising = flint.arb_series([w_y, w_yz], length)
     below = flint.arb_series([], length)
     here = flint.arb_series(_first_row(w_z, -w_yy, c, length), length)
     rows: BallTable = []
@@ -107,7 +106,8 @@ def ball_table(
         coefficients += [flint.arb(0)] * (length - len(coefficients))
         rows.append(list(map(operator.mul, coefficients, factors)))
         scale = 1 / root[v + 1]
-        here, below = raising * (scale * here) + (root[v] * w_yy * scale) * below, here
+        raising = flint.arb_series([w_y * scale, w_yz * scale], length)
+        here, below = raising * here + (root[v] * w_yy * scale) * below, here
     return rows
 
 

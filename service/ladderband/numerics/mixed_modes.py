@@ -194,7 +194,7 @@ def block_values(block: ModeBlock, step: float, count: int, deadline: Deadline) 
     return BlockValues(log, log_bound, mean, mean_bound, cov, cov_bound)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _tangents(g: Floats, f: Floats, exponents: Floats, times: Floats) -> Floats:
     """tau (re, im), cos and sin of f t / 2, and |1 + q|^2, q (re, im): (7, T, n)."""
     out = np.empty((7, len(times), len(g)))
@@ -214,7 +214,7 @@ def _tangents(g: Floats, f: Floats, exponents: Floats, times: Floats) -> Floats:
     return out
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _norm(re: Floats, im: Floats) -> float:
     total = 0.0
     for k in range(len(re)):
@@ -222,7 +222,7 @@ def _norm(re: Floats, im: Floats) -> float:
     return math.sqrt(total)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _fill(row_re: Floats, row_im: Floats, ar: Floats, ai: Floats, re: Floats, im: Floats) -> None:
     """Upper triangle of a_i a_j R_ij from the packed rows of R, without the i s of the diagonal."""
     n = len(ar)
@@ -236,7 +236,7 @@ def _fill(row_re: Floats, row_im: Floats, ar: Floats, ai: Floats, re: Floats, im
         p += n - i
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _packed_product(
     row_re: Floats, row_im: Floats, scale: Floats, v: Floats, outr: Floats, outi: Floats
 ) -> None:
@@ -261,7 +261,7 @@ def _packed_product(
         outi[i] *= scale[i]
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _pivot_logs(re: Floats, im: Floats, c: Floats, s: Floats) -> tuple[float, float, float, float]:
     """Sum of Log(d_k e^{-i phi_k}), the sum of |Log|, and the least distance from the cut."""
     total_re, total_im, size, margin = 0.0, 0.0, 0.0, 1.0
@@ -278,7 +278,7 @@ def _pivot_logs(re: Floats, im: Floats, c: Floats, s: Floats) -> tuple[float, fl
     return total_re, total_im, size, margin
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _bilinear(
     re: Floats, im: Floats, yr: Floats, yi: Floats, zr: Floats, zi: Floats
 ) -> tuple[float, float, float]:
@@ -296,7 +296,7 @@ def _bilinear(
     return total_re, total_im, size
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _quadratic_bound(
     x: float, y: float, v: float, w: float, matrix: float, factoring: float, phases: float
 ) -> float:
@@ -311,7 +311,7 @@ def _quadratic_bound(
     return 1.2 * (matrix * (v * w + x * y) + 3.0 * factoring * x * y + phases)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _evaluate(
     rows: Floats,
     values: Floats,
@@ -454,7 +454,7 @@ def _evaluate(
     return log, log_bound, mean, mean_bound, cov, cov_bound
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _scale_and_solve(
     re: Floats,
     im: Floats,
@@ -475,7 +475,7 @@ def _scale_and_solve(
     backward(re, im, br, bi, xr, xi)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _residual_norm(vector: Floats, c: Floats, xr: Floats, xi: Floats) -> float:
     """|vector - c^1/2 x|, the part of ``vector`` that a change of R acts on."""
     total = 0.0

@@ -222,7 +222,7 @@ def _nearest_mixing(duschinsky: Floats) -> tuple[Floats, float, int]:
             f"{distance:.3g} (at most {MIXING_REFUSED}). The geometries differ too much for normal "
             "coordinates in one frame; check the order of the atoms, freeze the large-amplitude "
             "mode in both states, or give a final gradient at the initial geometry.",
-            "/final/geometry",
+            "/final",
         )
     return orthogonal_mixing(duschinsky, repair=True)
 

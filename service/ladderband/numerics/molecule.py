@@ -108,7 +108,7 @@ def check_molecule(molecule: Molecule, pointer: str) -> list[str]:
         raise DomainError(
             f"Atoms {names} are {nearest:.3g} angstrom apart; nuclei of a molecule are never "
             f"nearer than {COLLAPSED_ANGSTROM} angstrom. Check the unit and the atoms.",
-            f"{pointer}/geometry",
+            pointer,
         )
     if nearest < CROWDED_ANGSTROM:
         return [

@@ -38,7 +38,7 @@ def factor_rounding(order: int) -> float:
     return math.sqrt(2.0) * gamma(order / 4.0 + 24.0)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def factor(re: Floats, im: Floats) -> float:
     """Overwrite the upper triangle of re + i im by U = D L^T; return the growth.
 
@@ -69,7 +69,7 @@ def factor(re: Floats, im: Floats) -> float:
     return growth
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def _apply_four(re: Floats, im: Floats, k: int) -> None:
     """Subtract pivots k..k+3 from all later rows, two rows at a time so that loads are shared."""
     n = re.shape[0]
@@ -119,7 +119,7 @@ def _apply_four(re: Floats, im: Floats, k: int) -> None:
             im[i, i] -= lr * ui + li * ur
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def forward(re: Floats, im: Floats, br: Floats, bi: Floats) -> None:
     """Overwrite b by y = L^{-1} b, with the U of :func:`factor`."""
     n = re.shape[0]
@@ -132,7 +132,7 @@ def forward(re: Floats, im: Floats, br: Floats, bi: Floats) -> None:
             bi[j] -= re[k, j] * zi + im[k, j] * zr
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, error_model="numpy")
 def backward(re: Floats, im: Floats, yr: Floats, yi: Floats, xr: Floats, xi: Floats) -> None:
     """x = L^{-T} D^{-1} y, the solution of X x = b when y = L^{-1} b."""
     n = re.shape[0]

@@ -62,3 +62,14 @@ LINES = Range(1, 1_000_000)
 POINTS = Range(2, 100_001)
 COORDINATE = Range(-1e4, 1e4)
 MIXING = Range(-2.0, 2.0)
+
+# molecules
+LENGTH = Range(-1e4, 1e4)  # angstrom or bohr
+MASS = Range(0.5, 500.0)  # u
+MASS_NUMBER = Range(0, 300)
+HESSIAN = Range(-1e6, 1e6)  # hartree/bohr^2; wrong units are asked about once wavenumbers are known
+GRADIENT = Range(-1e3, 1e3)  # hartree/bohr
+ENERGY = Range(-1e6, 1e6)  # hartree
+VECTOR = Range(-1e4, 1e4)
+SIGNED_WAVENUMBER = Range(-1e5, 1e5)
+REPLACED_WAVENUMBER = Range(10.0, 6000.0)

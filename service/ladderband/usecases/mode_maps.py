@@ -85,7 +85,8 @@ class MomentInput:
 class ModeMapsQuestion:
     """Two states and what to do where they leave a choice.
 
-    ``origin_cm1`` replaces the 0-0 wavenumber that the energies give.
+    ``origin_cm1`` replaces the 0-0 wavenumber that the energies give. ``vectors``: the client wants
+    the modes' vectors as well.
     """
 
     initial: StateInput
@@ -96,6 +97,7 @@ class ModeMapsQuestion:
     atom_order: AtomOrder = "check"
     choices: tuple[ModeChoice, ...] = ()
     moment: MomentInput | None = None
+    vectors: bool = False
 
 
 @dataclass(frozen=True)
@@ -283,7 +285,7 @@ def _moment(
             f"The derivatives of the transition dipole have shape "
             f"{' x '.join(map(str, derivatives.shape))}; {n} atoms need {3 * n} x 3 (row: the "
             "coordinate moved, column: component of the dipole).",
-            "/transition_dipole/derivatives",
+            "/transition_dipole/derivatives_debye_angstrom",
         )
     if given.at_final:
         rotation = placed.rotation

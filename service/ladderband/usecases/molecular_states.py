@@ -65,12 +65,15 @@ class StateInput:
 
     ``masses_given``: the client named masses or isotopes for this state. The energy is that of the
     geometry given: the minimum for a Hessian or modes, the initial geometry for a gradient.
+    ``geometry_member`` and ``source_member`` are what a refusal points at, below the state.
     """
 
     molecule: Molecule | None
     source: HessianInput | ModesInput | GradientInput
     energy_hartree: float | None = None
     masses_given: bool = False
+    geometry_member: str = "geometry_angstrom"
+    source_member: str = "hessian_hartree_bohr2"
 
     @property
     def is_gradient(self) -> bool:
@@ -111,13 +114,12 @@ def harmonic_state(state: StateInput, pointer: str) -> tuple[HarmonicState, list
             "state may be given by its gradient.",
             pointer,
         )
-    warnings = check_molecule(molecule, pointer)
+    warnings = check_molecule(molecule, f"{pointer}/{state.geometry_member}")
+    where = f"{pointer}/{state.source_member}"
     if isinstance(source, HessianInput):
-        where = f"{pointer}/hessian"
         hessian, more = checked_hessian(source.hessian, molecule, where)
         modes = normal_modes(molecule, hessian)
     else:
-        where = f"{pointer}/normal_modes"
         modes, more = _from_modes(source, molecule, where)
     return HarmonicState(molecule, modes), [*warnings, *more, *check_wavenumbers(modes, where)]
 
@@ -147,7 +149,8 @@ def placed_final(reference: Molecule, final: StateInput, atom_order: AtomOrder) 
     """
     if final.molecule is None:
         return _placed_gradient(reference, final, tuple(range(reference.n_atoms)), None, [])
-    warnings = check_molecule(final.molecule, "/final")
+    where = f"/final/{final.geometry_member}"
+    warnings = check_molecule(final.molecule, where)
     order = _settled_order(reference, final.molecule, atom_order)
     molecule = _with_masses(reference, reordered(final.molecule, order), final.masses_given)
     if order != tuple(range(len(order))):
@@ -155,7 +158,7 @@ def placed_final(reference: Molecule, final: StateInput, atom_order: AtomOrder) 
     aligned, alignment = align(reference, molecule)
     if alignment.mirror_distance < alignment.distance - MIRROR_SLACK_ANGSTROM:
         warnings.append(
-            f"/final/geometry: its mirror image lies nearer to the initial geometry "
+            f"{where}: its mirror image lies nearer to the initial geometry "
             f"({alignment.mirror_distance:.3g} against {alignment.distance:.3g} angstrom): is one "
             "of the two the other enantiomer, or a left-handed frame?"
         )
@@ -163,6 +166,7 @@ def placed_final(reference: Molecule, final: StateInput, atom_order: AtomOrder) 
         return _placed_gradient(reference, final, order, alignment, warnings)
     own = replace(final, molecule=molecule, source=_reordered_source(final.source, order))
     state, more = harmonic_state(own, "/final")
+    more = [text for text in more if text not in warnings]  # the geometry was looked at already
     state = HarmonicState(aligned, turned_modes(state.modes, alignment.rotation))
     return Placed(state, None, order, alignment, (*warnings, *more))
 
@@ -181,7 +185,7 @@ def _placed_gradient(
         raise DomainError(
             f"The gradient has {gradient.size} numbers; {reference.n_atoms} atoms need "
             f"{3 * reference.n_atoms}.",
-            "/final/gradient",
+            f"/final/{final.source_member}",
         )
     if alignment is not None and alignment.distance > SAME_GEOMETRY_ANGSTROM:
         raise DomainError(
@@ -189,7 +193,7 @@ def _placed_gradient(
             f"{alignment.distance:.3g} angstrom from the initial ones, at most "
             f"{SAME_GEOMETRY_ANGSTROM:g} is allowed. Compute the final state's gradient at the "
             "initial geometry, or give its Hessian at its own minimum.",
-            "/final/geometry",
+            f"/final/{final.geometry_member}",
         )
     rotation = np.eye(3) if alignment is None else alignment.rotation
     turned = gradient.reshape(-1, 3)[list(order)] @ rotation.T

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path
 from typing import Any
 
 import orjson
@@ -222,3 +223,40 @@ def _operation(operation_id: str, summary: str, content: dict[str, Any]) -> dict
         "summary": summary,
         "responses": {"200": {"description": summary, "content": content}, "default": "Problem"},
     }
+
+
+def files() -> dict[str, bytes]:
+    """Every file of the description folder: the document and one file an example."""
+    found = {"openapi.json": description_json()}
+    options = orjson.OPT_INDENT_2 | orjson.OPT_APPEND_NEWLINE
+    for resource in RESOURCES:
+        stem = resource.path.removeprefix("/v1/")
+        for name, body in resource.examples.items():
+            example = {"method": "POST", "path": resource.path, "body": dict(body)}
+            found[f"examples/{stem}-{name}.json"] = orjson.dumps(example, option=options)
+    return found
+
+
+def write_files(folder: Path) -> list[Path]:
+    """Write the description folder; examples that are no longer declared are removed."""
+    (folder / "examples").mkdir(parents=True, exist_ok=True)
+    for path in _superfluous(folder):
+        path.unlink()
+    for name, content in files().items():
+        (folder / name).write_bytes(content)
+    return [folder / name for name in files()]
+
+
+def stale_files(folder: Path) -> list[Path]:
+    """Files of the folder that differ from what would be written, are missing or superfluous."""
+    stale = [
+        folder / name
+        for name, content in files().items()
+        if not (folder / name).is_file() or (folder / name).read_bytes() != content
+    ]
+    return stale + _superfluous(folder)
+
+
+def _superfluous(folder: Path) -> list[Path]:
+    present = set((folder / "examples").glob("*.json"))
+    return sorted(present - {folder / name for name in files()})

@@ -33,6 +33,7 @@ from ladderband.jobs.errors import (
 from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.schemas.base import complaints
 from ladderband.usecases.limits import CostLimitExceeded
+from ladderband.usecases.mode_maps import ModesNeedAChoice
 
 MEDIA_TYPE = "application/problem+json"
 MAX_ERRORS = 20
@@ -155,6 +156,12 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "precision-not-reached", 422, "The requested precision was not reached",
         "No route met the requested bound or digits within the cost limit. Ask for less, or for "
         "fewer quanta.", lambda error: {"requested": error.requested, "reached": error.reached},
+    ),
+    ModesNeedAChoice: Problem(
+        "modes-need-a-choice", 422, "Modes without a harmonic oscillator need a choice",
+        "Modes with an imaginary or nearly vanishing wavenumber are never dropped silently. modes "
+        "lists them; send mode_choices with one entry for each.",
+        lambda error: {"modes": list(error.modes), "actions": ["freeze", "replace"]},
     ),
     CostLimitExceeded: Problem(
         "cost-limit", 422, "The request is too much work",

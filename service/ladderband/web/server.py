@@ -1,0 +1,81 @@
+"""The service as a set of gunicorn processes."""
+
+from __future__ import annotations
+
+import os
+import shutil
+import sys
+from typing import Any
+
+from flask import Flask
+from gunicorn.app.base import BaseApplication
+from prometheus_client.multiprocess import mark_process_dead
+
+from ladderband.settings import Settings
+
+WORKER_TIMEOUT_S = 60
+"""A worker that gives no sign of life for this long is replaced; not a limit of one request."""
+
+
+class Server(BaseApplication):  # type: ignore[misc]
+    """gunicorn with our settings; each worker makes its own application after the fork."""
+
+    def __init__(self, settings: Settings) -> None:
+        self.settings = settings
+        super().__init__()
+
+    def load_config(self) -> None:
+        options = {
+            "bind": f"{_bracketed(self.settings.host)}:{self.settings.port}",
+            "workers": self.settings.workers,
+            "threads": self.settings.threads,
+            "worker_class": "gthread",
+            "keepalive": self.settings.keep_alive_s,
+            "graceful_timeout": self.settings.grace_s,
+            "timeout": WORKER_TIMEOUT_S,
+            "control_socket_disable": True,
+            "proc_name": "ladderband",
+            "loglevel": "warning",
+            "worker_tmp_dir": "/dev/shm" if os.access("/dev/shm", os.W_OK) else None,
+            "post_worker_init": self._ready,
+            "child_exit": lambda server, worker: _forget(worker.pid),
+            "on_exit": _remove_counters,
+        }
+        for name, value in options.items():
+            self.cfg.set(name, value)
+
+    def load(self) -> Flask:
+        """Import, build and warm up: runs in the worker, before it takes its first request."""
+        from ladderband.formats import plots
+        from ladderband.numerics.warm import warm
+        from ladderband.web.app import create_app
+
+        app = create_app(self.settings)
+        warm()
+        plots.warm()
+        return app
+
+    def _ready(self, worker: Any) -> None:
+        # Warm, and about to take requests; those already waiting in the socket are answered. The
+        # first worker ever started announces, later ones (after a crash) keep quiet.
+        if worker.age == 1:
+            host, port = worker.sockets[0].getsockname()[:2]
+            print(f"Ladderband answers at http://{_bracketed(host)}:{port}", flush=True)
+
+
+def _forget(pid: int) -> None:
+    mark_process_dead(pid)  # type: ignore[no-untyped-call]
+
+
+def _bracketed(host: str) -> str:
+    return f"[{host}]" if ":" in host else host
+
+
+def _remove_counters(server: Any) -> None:
+    shutil.rmtree(os.environ["PROMETHEUS_MULTIPROC_DIR"], ignore_errors=True)
+
+
+def run(settings: Settings) -> None:
+    """Serve until SIGTERM or SIGINT; does not return."""
+    sys.argv = sys.argv[:1]  # gunicorn must not read our options
+    Server(settings).run()

@@ -1,0 +1,55 @@
+"""The whole service as a child process, for tests that need real HTTP and real processes."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+import re
+import signal
+import subprocess
+import sys
+import tempfile
+import threading
+from collections.abc import Iterator
+from dataclasses import dataclass
+from pathlib import Path
+
+KERNELS = Path(tempfile.gettempdir()) / f"ladderband-tests-{os.getuid()}"
+ADDRESS = re.compile(rb"Ladderband answers at (http://\S+)")
+
+
+@dataclass
+class LiveServer:
+    """A running ``ladderband serve``."""
+
+    url: str
+    process: subprocess.Popen[bytes]
+
+    def stop(self, grace_s: float = 30.0) -> int:
+        """Send SIGTERM and wait; returns the exit status."""
+        self.process.send_signal(signal.SIGTERM)
+        return self.process.wait(grace_s)
+
+
+@contextlib.contextmanager
+def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
+    """``ladderband serve`` on a free port with further options."""
+    command = [sys.executable, "-m", "ladderband", "serve", "--port", "0"]
+    command += ["--data-dir", str(data_dir), "--no-log-requests", *options]
+    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL)
+    assert process.stdout is not None
+    # a watchdog instead of a timed read: a cold kernel cache may take a minute
+    watchdog = threading.Timer(150.0, process.kill)
+    watchdog.start()
+    try:
+        line = process.stdout.readline()
+        found = ADDRESS.search(line)
+        assert found, f"the service did not start: {line!r}"
+        watchdog.cancel()
+        yield LiveServer(found[1].decode(), process)
+    finally:
+        watchdog.cancel()
+        if process.poll() is None:
+            process.terminate()
+            process.wait(30)
+        process.stdout.close()
