@@ -362,8 +362,8 @@ def leave(database: Database, owner: str) -> None:
         connection.execute(sa.delete(engine).where(engine.c.owner == owner))
 
 
-def parts_of(database: Database, job_id: str) -> Iterable[bytes]:
-    """The outputs of a job's shards in the order of their points, one at a time."""
+def parts_of(database: Database, job_id: str, *, last: bool = False) -> Iterable[bytes]:
+    """The outputs of a job's shards in the order of their points, one at a time; or the last."""
     with database.reading() as connection:
         keys = connection.execute(
             sa.select(output.c.shard_id, output.c.part)
@@ -371,7 +371,7 @@ def parts_of(database: Database, job_id: str) -> Iterable[bytes]:
             .where(shard.c.job_id == job_id, shard.c.state == "done")
             .order_by(shard.c.start, output.c.part)
         ).all()
-    for key in keys:
+    for key in keys[-1:] if last else keys:
         with database.reading() as connection:
             data = connection.scalar(
                 sa.select(output.c.data).where(

@@ -7,7 +7,8 @@ slash) and ``error``, which is null for a point that was answered.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
+import io
+from collections.abc import Iterable, Iterator, Sequence
 from typing import Any
 
 import numpy as np
@@ -187,16 +188,11 @@ def npy_rows(block: Block, dtype: np.dtype[Any]) -> bytes:
 
 def npy_header(dtype: np.dtype[Any], rows: int) -> bytes:
     """The start of a .npy file (format 1.0) of ``rows`` records."""
-    import io
-
     buffer = io.BytesIO()
     np.lib.format.write_array_header_1_0(
         buffer, {"descr": dtype.descr, "fortran_order": False, "shape": (rows,)}
     )
     return buffer.getvalue()
-
-
-Writer = Callable[[Iterable[Block]], Iterator[bytes]]
 
 
 def csv_file(header: dict[str, Any], blocks: Iterable[Block]) -> Iterator[bytes]:
@@ -226,3 +222,68 @@ def json_file(header: dict[str, Any], blocks: Iterable[Block]) -> Iterator[bytes
         yield rows if first else b"," + rows
         first = False
     yield b"]}"
+
+
+def arrow_file(header: dict[str, Any], blocks: Iterable[Block]) -> Iterator[bytes]:
+    """An Arrow file (IPC), one record batch a part."""
+    import pyarrow as pa
+
+    def opened(sink: Any, schema: Any) -> Any:
+        return pa.ipc.new_file(sink, schema)
+
+    return _columnar(header, blocks, opened)
+
+
+def parquet_file(header: dict[str, Any], blocks: Iterable[Block]) -> Iterator[bytes]:
+    """A Parquet file, one row group a part."""
+    import pyarrow.parquet as pq
+
+    def opened(sink: Any, schema: Any) -> Any:
+        return pq.ParquetWriter(sink, schema)
+
+    return _columnar(header, blocks, opened)
+
+
+def _columnar(header: dict[str, Any], blocks: Iterable[Block], opened: Any) -> Iterator[bytes]:
+    import pyarrow as pa
+
+    kinds = {"integer": pa.int64(), "number": pa.float64(), "boolean": pa.bool_()}
+    columns = header["columns"]
+    schema = pa.schema([(name, kinds.get(kind, pa.string())) for name, kind in columns.items()])
+    sink = _Sink()
+    with opened(sink, schema) as writer:
+        for block in blocks:
+            plain = {n: _texts(v) if columns[n] == "json" else v for n, v in block.items()}
+            arrays = [pa.array(plain[field.name], field.type) for field in schema]
+            writer.write_table(pa.Table.from_arrays(arrays, schema=schema))
+            yield sink.taken()
+    yield sink.taken()
+
+
+class _Sink(io.RawIOBase):
+    """A file that is handed on piece by piece while it is written."""
+
+    def __init__(self) -> None:
+        self._pieces: list[bytes] = []
+        self._position = 0
+
+    def writable(self) -> bool:
+        return True
+
+    def write(self, data: Any) -> int:
+        self._pieces.append(bytes(data))
+        self._position += len(self._pieces[-1])
+        return len(self._pieces[-1])
+
+    def tell(self) -> int:
+        return self._position
+
+    def taken(self) -> bytes:
+        """What was written since the last time."""
+        pieces, self._pieces = self._pieces, []
+        return b"".join(pieces)
+
+
+def _texts(values: list[Any]) -> list[str | None]:
+    """Values of mixed types as JSON text."""
+    return [None if value is None else orjson.dumps(value).decode() for value in values]

@@ -47,5 +47,3 @@ class JobListSchema(StrictSchema):
 
     jobs = Many(JobSchema, "The jobs of this page.", required=True)
     next = Reply("Address of the next page.", {"type": ["string", "null"]})
-
-

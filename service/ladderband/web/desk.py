@@ -11,9 +11,11 @@ import re
 import threading
 import time
 from dataclasses import dataclass, field
+from datetime import UTC, datetime
 from typing import Any
 
-from flask import Flask, current_app, g, request
+import orjson
+from flask import Flask, Response, current_app, g, request
 
 from ladderband.jobs.claims import parts_of
 from ladderband.jobs.database import Database
@@ -89,6 +91,42 @@ class Desk:
             return job
         finally:
             self.places.release()
+
+
+def accepted(job: JobView) -> Response:
+    """202 with the job and its address."""
+    response = Response(orjson.dumps(job_members(job)), 202, content_type="application/json")
+    response.headers["Location"] = f"/v1/jobs/{job.id}"
+    response.headers["Retry-After"] = "1"
+    return response
+
+
+def job_members(job: JobView) -> dict[str, Any]:
+    """A job as JSON."""
+    address = f"/v1/jobs/{job.id}"
+    return {
+        "id": job.id,
+        "kind": job.kind,
+        "state": job.state,
+        "total": job.total,
+        "done": job.done,
+        "rate_per_s": job.rate,
+        "created": moment(job.created),
+        "started": moment(job.started),
+        "finished": moment(job.finished),
+        "estimated_end": moment(job.estimated_end),
+        "result_expired": job.state == "succeeded" and not job.has_result,
+        "request_digest": job.digest,
+        "problem": None if job.problem is None else complete(job),
+        "links": {"self": address, "events": f"{address}/events", "result": f"{address}/result"},
+    }
+
+
+def moment(seconds: float | None) -> str | None:
+    """A time of the records as RFC 3339 text."""
+    if seconds is None:
+        return None
+    return datetime.fromtimestamp(seconds, UTC).isoformat(timespec="milliseconds")
 
 
 def desk() -> Desk:

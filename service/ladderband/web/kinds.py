@@ -16,8 +16,6 @@ from ladderband.web.problems import members_of
 from ladderband.web.resource import Resource
 from ladderband.web.resources import RESOURCES
 
-REFERENCE = "ladderband.web.kinds:kinds"
-
 
 def kinds() -> dict[str, Kind]:
     """Every compute resource by its name, with the limits of jobs."""

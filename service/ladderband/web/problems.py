@@ -230,6 +230,9 @@ HTTP_PROBLEMS: dict[int, Problem] = {
     ),
     413: PROBLEMS[BodyTooLarge],
     415: PROBLEMS[UnsupportedMediaType],
+    416: Problem(
+        "range-not-satisfiable", 416, "The result has no such bytes", "Content-Range has its length."
+    ),
     429: Problem("too-many-requests", 429, "Too many requests", "Wait as Retry-After says."),
     500: Problem(
         "internal", 500, "The service failed",
@@ -321,7 +324,7 @@ def _http(error: HTTPException) -> Response:
         problem = HTTP_PROBLEMS[500]
     response = document(problem, None)
     for name, value in error.get_headers():
-        if name.lower() in {"allow", "retry-after"}:
+        if name.lower() in {"allow", "retry-after", "content-range"}:
             response.headers[name] = value
     return response
 
