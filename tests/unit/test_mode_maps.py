@@ -6,12 +6,13 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from mpmath import MPContext
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.alignment import reordered
 from ladderband.numerics.errors import DeadlineExceeded, DomainError
 from ladderband.numerics.mode_choices import ModeChoice
-from ladderband.numerics.normal_modes import normal_modes
+from ladderband.numerics.normal_modes import FORCE_CONSTANT_CM1, normal_modes
 from ladderband.numerics.transition import ORTHOGONALITY_TOLERANCE
 from ladderband.numerics.units import HARTREE_CM1
 from ladderband.usecases.limits import CostLimitExceeded, Limits
@@ -27,7 +28,7 @@ from ladderband.usecases.molecular_states import (
     ModesInput,
     StateInput,
 )
-from spring_molecules import BENT, LINEAR, committed_state, spring_hessian
+from spring_molecules import BENT, LINEAR, committed_state, random_molecule, spring_hessian
 
 
 def answer(initial, final, **members):
@@ -254,6 +255,21 @@ def test_bad_input_is_refused_with_a_sentence(case):
     assert refusal.value.pointer.startswith("/")
 
 
+def test_dipole_derivatives_that_do_not_cancel_are_asked_about():
+    drifting = MomentInput(np.array([0.0, 0.0, 1.0]), np.eye(9)[:, :3])
+    cancelling = np.vstack([np.eye(3), -np.eye(3), np.zeros((3, 3))])
+    assert any("shifted" in text for text in answer(springs(), springs(), moment=drifting).warnings)
+    fine = answer(springs(), springs(), moment=MomentInput(np.ones(3), cancelling))
+    assert not any("shifted" in text for text in fine.warnings)
+
+
+def test_a_displacement_no_band_can_take_is_told():
+    pull = StateInput(None, GradientInput(np.array([0.0, 0, 0, 0, 0, 9, 0, 0, -9])))
+    assert any(
+        "no line list or band takes this" in text for text in answer(springs(), pull).warnings
+    )
+
+
 def test_the_origin_can_be_sent_instead_of_energies():
     found = answer(springs(), springs(seed=2), origin_cm1=12345.0)
     assert found.transition.origin_cm1 == 12345.0
@@ -274,3 +290,57 @@ def test_the_accuracy_is_an_estimate_and_says_so():
     accuracy = answer(WATER, WATER_ION).accuracy
     assert accuracy.evidence == "estimated"
     assert 0.0 < accuracy.bound < 1e-4
+
+
+def fifty_digit_wavenumbers(molecule, hessian):
+    """The same modes by mpmath with 50 digits: explicit projector, then eigsy."""
+    ctx = MPContext()  # private: mpmath's own precision is shared by the whole process
+    ctx.dps = 50
+    n = molecule.n_atoms
+    masses = [ctx.mpf(m) for m in molecule.masses_u]
+    place = [[ctx.mpf(x) for x in row] for row in molecule.geometry_angstrom]
+    total = sum(masses)
+    centre = [sum(masses[a] * place[a][x] for a in range(n)) / total for x in range(3)]
+    motions = []
+    for x in range(3):
+        motions.append([ctx.sqrt(masses[a]) * (y == x) for a in range(n) for y in range(3)])
+        p, q = (x + 1) % 3, (x + 2) % 3
+        turn = []
+        for a in range(n):
+            r = [place[a][y] - centre[y] for y in range(3)]
+            moved = [ctx.mpf(0)] * 3
+            moved[p], moved[q] = -r[q], r[p]
+            turn += [ctx.sqrt(masses[a]) * y for y in moved]
+        motions.append(turn)
+    basis = []
+    for vector in motions:
+        for other in basis:
+            along = ctx.fdot(vector, other)
+            vector = [v - along * o for v, o in zip(vector, other, strict=True)]
+        length = ctx.sqrt(ctx.fdot(vector, vector))
+        basis.append([v / length for v in vector])
+    size = 3 * n
+    projector = ctx.eye(size) - sum(
+        (ctx.matrix(b) * ctx.matrix(b).T for b in basis), ctx.zeros(size)
+    )
+    weighted = ctx.matrix(size, size)
+    for i in range(size):
+        for j in range(size):
+            weighted[i, j] = ctx.mpf(hessian[i, j]) / ctx.sqrt(masses[i // 3] * masses[j // 3])
+    values = ctx.eigsy(projector * weighted * projector, eigvals_only=True)
+    kept = sorted(values)[6:] if min(values) > -1e-30 else sorted(values, key=abs)[6:]
+    return np.sort([float(FORCE_CONSTANT_CM1 * ctx.sqrt(v)) for v in kept])
+
+
+@pytest.mark.parametrize("stiffening", [1.0, 1e-3], ids=["ordinary", "soft"])
+def test_the_stated_accuracy_holds_against_fifty_digits(stiffening):
+    molecule = random_molecule(np.random.default_rng(3), 5)
+    hessian = spring_hessian(molecule, np.random.default_rng(4))
+    rigid = replace(molecule, masses_u=np.ones(5)).rigid_motions
+    hessian -= (1.0 - stiffening) * 0.03 * (np.eye(15) - rigid @ rigid.T)
+    hessian = 0.5 * (hessian + hessian.T)
+    state = StateInput(molecule, HessianInput(hessian))
+    found = answer(state, state)
+    exact = fifty_digit_wavenumbers(molecule, hessian)
+    error = np.abs(found.all_wavenumbers_initial - exact).max()
+    assert error < found.accuracy.bound - 3e-10 * exact.max()  # its rounding part alone

@@ -130,8 +130,10 @@ def contraction(block: ModeBlock) -> float:
     return alpha
 
 
-def block_values(block: ModeBlock, step: float, count: int, deadline: Deadline) -> BlockValues:
-    """Evaluate one block at t = 0, step, ..., (count - 1) step.
+def block_values(
+    block: ModeBlock, step: float, start: int, stop: int, deadline: Deadline
+) -> BlockValues:
+    """Evaluate one block at the times start * step, ..., (stop - 1) * step.
 
     Cost a time point for n modes: 4 n^3 flops of real matrix product (all points at once) and two
     factorisations of n^3/3 complex multiplications. ``step`` must have at most 30 significant bits
@@ -149,9 +151,9 @@ def block_values(block: ModeBlock, step: float, count: int, deadline: Deadline) 
     slopes = (block.mixing @ block.slopes) / np.sqrt(block.f)[:, None]
     chunk = max(1, min(64, CHUNK_BYTES // (8 * 4 * len(outer))))
     parts = []
-    for first in range(0, count, chunk):
+    for first in range(start, stop, chunk):
         deadline.check()
-        times = step * np.arange(first, min(first + chunk, count))
+        times = step * np.arange(first, min(first + chunk, stop))
         values = _tangents(block.g, block.f, block.exponents, times)
         stacked = np.concatenate(
             [

@@ -18,6 +18,7 @@ from marshmallow import ValidationError
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.isotopes import atomic_number
 from ladderband.numerics.transition import Floats
+from ladderband.schemas import ranges
 from ladderband.schemas.fields import Complaint, Described
 
 SCHEMA_NAMES = ("qcschema_output", "qcschema_atomic_result")
@@ -76,15 +77,19 @@ def read_document(document: Mapping[str, Any]) -> DocumentState:
         A member that is needed is missing or is not what the standard says it is.
     """
     if document.get("schema_name") not in SCHEMA_NAMES:
-        raise _wrong("schema_name", "This is not the name of a result document.", SCHEMA_NAMES)
+        raise wrong_at(
+            "schema_name", "This is not the name of a result document.", " or ".join(SCHEMA_NAMES)
+        )
     if document.get("success") is not True:
-        raise _wrong("success", "The calculation did not succeed.", ("true",))
+        raise wrong_at("success", "The calculation did not succeed.", "true")
     molecule = _object(document, "molecule")
     numbers = _atoms(molecule)
     driver, member, derivative = _derivative(document, 3 * len(numbers))
     return DocumentState(
         numbers,
-        _array(molecule, "geometry", "molecule/geometry", 3 * len(numbers)).reshape(-1, 3),
+        _array(molecule, "geometry", "molecule/geometry", 3 * len(numbers), ranges.LENGTH).reshape(
+            -1, 3
+        ),
         _masses(molecule, len(numbers)),
         _mass_numbers(molecule, len(numbers)),
         driver,
@@ -94,8 +99,9 @@ def read_document(document: Mapping[str, Any]) -> DocumentState:
     )
 
 
-def _wrong(pointer: str, detail: str, allowed: tuple[str, ...]) -> ValidationError:
-    messages: Any = [Complaint(detail, "one of: " + ", ".join(allowed))]
+def wrong_at(pointer: str, detail: str, allowed: str) -> ValidationError:
+    """The error for the member at ``pointer`` (names joined by slashes)."""
+    messages: Any = [Complaint(detail, allowed)]
     for name in reversed(pointer.split("/")):
         messages = {name: messages}
     return ValidationError(messages)
@@ -104,48 +110,56 @@ def _wrong(pointer: str, detail: str, allowed: tuple[str, ...]) -> ValidationErr
 def _object(parent: Mapping[str, Any], name: str) -> Mapping[str, Any]:
     value = parent.get(name)
     if type(value) is not dict:
-        raise _wrong(name, "This member is required.", ("an object",))
+        raise wrong_at(name, "This member is required.", "an object")
     return value
 
 
 def _atoms(molecule: Mapping[str, Any]) -> tuple[int, ...]:
     symbols = molecule.get("symbols")
     if type(symbols) is not list or not symbols or set(map(type, symbols)) != {str}:
-        raise _wrong("molecule/symbols", "This is not a list of symbols.", ('["O", "H", "H"]',))
+        raise wrong_at("molecule/symbols", "This is not a list of symbols.", '["O", "H", "H"]')
     real = molecule.get("real")
     if real is not None and real != [True] * len(symbols):
-        raise _wrong("molecule/real", "There are ghost atoms.", ("true for every atom",))
+        raise wrong_at("molecule/real", "There are ghost atoms.", "true for every atom")
     try:
         return tuple(atomic_number(symbol) for symbol in symbols)
     except DomainError as error:
-        raise _wrong("molecule/symbols", str(error), ("symbols of elements",)) from None
+        raise wrong_at("molecule/symbols", str(error), "symbols of elements") from None
 
 
-def _array(parent: Mapping[str, Any], name: str, pointer: str, size: int) -> Floats:
-    """A flat array of finite numbers; nested rows are flattened, as the standard's readers do."""
+def _array(
+    parent: Mapping[str, Any], name: str, pointer: str, size: int, within: ranges.Range
+) -> Floats:
+    """A flat array of numbers; nested rows are flattened, as the standard's readers do."""
     try:
-        array = np.array(parent.get(name), dtype=np.float64).ravel()
-    except (TypeError, ValueError):
-        raise _wrong(pointer, "This is not an array of numbers.", (f"{size} numbers",)) from None
-    if array.size != size or not np.isfinite(array).all():
-        raise _wrong(pointer, f"This holds {array.size} numbers.", (f"{size} finite numbers",))
-    return array
+        array = np.array(parent.get(name))
+    except ValueError:  # ragged
+        array = np.array(None)
+    allowed = f"{size} numbers, each {within.text()}"
+    if array.dtype.kind not in "if":
+        raise wrong_at(pointer, "This is not an array of numbers.", allowed)
+    if array.size != size:
+        raise wrong_at(pointer, f"This holds {array.size} numbers.", allowed)
+    flat = array.ravel().astype(np.float64)
+    outside = within.first_outside(flat)
+    if outside is not None:
+        raise wrong_at(pointer, f"Number {outside} is outside the allowed range.", allowed)
+    return flat
 
 
 def _masses(molecule: Mapping[str, Any], n: int) -> Floats | None:
     if molecule.get("masses") is None:
         return None
-    masses = _array(molecule, "masses", "molecule/masses", n)
-    if not ((masses > 0.5) & (masses < 500.0)).all():
-        raise _wrong("molecule/masses", "This is not a list of masses in u.", ("0.5 to 500 u",))
-    return masses
+    return _array(molecule, "masses", "molecule/masses", n, ranges.MASS)
 
 
 def _mass_numbers(molecule: Mapping[str, Any], n: int) -> tuple[int | None, ...] | None:
     """Mass numbers; the standard's -1 stands for an isotope that is not stated."""
     if molecule.get("mass_numbers") is None:
         return None
-    numbers = _array(molecule, "mass_numbers", "molecule/mass_numbers", n)
+    numbers = _array(
+        molecule, "mass_numbers", "molecule/mass_numbers", n, ranges.DOCUMENT_MASS_NUMBER
+    )
     return tuple(int(a) if a > 0 else None for a in numbers)
 
 
@@ -153,22 +167,34 @@ def _derivative(document: Mapping[str, Any], size: int) -> tuple[Derivative, str
     """The Hessian, or else the gradient, and where it was found."""
     driver = document.get("driver")
     if driver is None:  # version 2 keeps it in the copy of the input
-        specification = document.get("input_data", {}).get("specification", {})
-        driver = specification.get("driver")
-    properties = document.get("properties")
-    found: Mapping[str, Any] = properties if type(properties) is dict else {}
-    wanted: tuple[tuple[Derivative, int], ...] = (("hessian", size * size), ("gradient", size))
-    for kind, count in wanted:
+        driver = _inner(_inner(document, "input_data"), "specification").get("driver")
+    properties = _inner(document, "properties")
+    wanted: tuple[tuple[Derivative, int, ranges.Range], ...] = (
+        ("hessian", size * size, ranges.HESSIAN),
+        ("gradient", size, ranges.GRADIENT),
+    )
+    for kind, count, within in wanted:
         if driver == kind:
-            return kind, "return_result", _array(document, "return_result", "return_result", count)
+            member = "return_result"
+            return kind, member, _array(document, member, member, count, within)
         name = f"return_{kind}"
-        if found.get(name) is not None:
+        if properties.get(name) is not None:
             member = f"properties/{name}"
-            return kind, member, _array(found, name, member, count)
-    raise _wrong("driver", "There is neither a Hessian nor a gradient.", ("hessian", "gradient"))
+            return kind, member, _array(properties, name, member, count, within)
+    raise wrong_at(
+        "driver", "There is neither a Hessian nor a gradient.", "driver hessian or gradient"
+    )
+
+
+def _inner(parent: Mapping[str, Any], name: str) -> Mapping[str, Any]:
+    """An optional object, empty when it is missing or something else."""
+    value = parent.get(name)
+    return value if isinstance(value, dict) else {}
 
 
 def _energy(document: Mapping[str, Any]) -> float | None:
-    properties = document.get("properties")
-    energy = properties.get("return_energy") if type(properties) is dict else None
-    return float(energy) if isinstance(energy, int | float) else None
+    properties = _inner(document, "properties")
+    if properties.get("return_energy") is None:
+        return None
+    member = "properties/return_energy"
+    return float(_array(properties, "return_energy", member, 1, ranges.ENERGY)[0])

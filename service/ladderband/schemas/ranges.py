@@ -67,6 +67,7 @@ MIXING = Range(-2.0, 2.0)
 LENGTH = Range(-1e4, 1e4)  # angstrom or bohr
 MASS = Range(0.5, 500.0)  # u
 MASS_NUMBER = Range(0, 300)
+DOCUMENT_MASS_NUMBER = Range(-1, 300)  # QCSchema: -1 stands for an isotope not stated
 HESSIAN = Range(-1e6, 1e6)  # hartree/bohr^2; wrong units are asked about once wavenumbers are known
 GRADIENT = Range(-1e3, 1e3)  # hartree/bohr
 ENERGY = Range(-1e6, 1e6)  # hartree

@@ -48,8 +48,13 @@ LARGE_RATIO = 2.0
 
 ORTHOGONALITY_MENTIONED = 0.01
 OUTSIDE_MENTIONED = 0.01
-DRIFT_MENTIONED = 0.01
-"""Share of a moment's slopes that a shift of the whole molecule may carry before it is told."""
+DRIFT_MENTIONED = 0.05
+"""Share of a dipole's derivatives that a shift of the whole molecule may carry before it is told."""
+
+
+SENT_ON_DISPLACEMENT = 63.25
+SENT_ON_RATIO = 50.0
+"""What the resources that take a transition accept: S up to 2000, f/g from 1/50 to 50."""
 
 
 class ModesNeedAChoice(UseCaseError):
@@ -251,10 +256,10 @@ def _energies(question: ModeMapsQuestion, mapped: ModeMap) -> Energies:
     zero_final = 0.5 * float(mapped.wavenumbers_final.sum())
     on_initial = float(mapped.reorganisation_initial_cm1.sum())
     on_final = float(mapped.reorganisation_final_cm1.sum())
-    low, high = question.initial.energy_hartree, question.final.energy_hartree
+    start, end = question.initial.energy_hartree, question.final.energy_hartree
     adiabatic = vertical = origin = None
-    if low is not None and high is not None:
-        minimum = (high - low) * HARTREE_CM1
+    if start is not None and end is not None:
+        minimum = (end - start) * HARTREE_CM1
         if question.final.is_gradient:
             minimum -= on_final  # the energy given is the vertical one
         adiabatic, vertical = sign * minimum, sign * (minimum + on_final)
@@ -339,9 +344,38 @@ def _warnings(
         )
     if any(choice.wavenumber_cm1 is None for choice in question.choices):
         found.append("Zero points and reorganisation energies leave out the frozen modes.")
+    found += _cannot_be_sent_on(mapped)
+    if _drift(question.moment) > DRIFT_MENTIONED:
+        found.append(
+            "The derivatives of the transition dipole do not cancel when the whole molecule is "
+            "shifted; between two states of one molecule they should. Check their order and rows."
+        )
     if energies.origin_cm1 is None:
         found.append("No energies were given: the transition has its 0-0 line at 0 cm^-1.")
     return found
+
+
+def _cannot_be_sent_on(mapped: ModeMap) -> list[str]:
+    """Pairs that other resources refuse, which means that something is wrong with the input."""
+    ratios = mapped.wavenumbers_final / mapped.wavenumbers_initial
+    far = np.maximum(ratios, 1.0 / ratios) > SENT_ON_RATIO
+    wrong = np.flatnonzero((np.abs(mapped.displacement) > SENT_ON_DISPLACEMENT) | far)
+    return [
+        f"Mode {k} has displacement {mapped.displacement[k]:.3g} and wavenumber ratio "
+        f"{ratios[k]:.3g}: no line list or band takes this. Check units, frames and atoms."
+        for k in wrong
+    ]
+
+
+def _drift(moment: MomentInput | None) -> float:
+    """What a shift of the whole molecule does to the dipole, as a share of its derivatives.
+
+    The dipole operator between two orthogonal states does not depend on the origin.
+    """
+    if moment is None or moment.derivatives is None or not moment.derivatives.any():
+        return 0.0
+    per_shift = moment.derivatives.reshape(-1, 3, 3).sum(axis=0)
+    return float(np.linalg.norm(per_shift) / np.linalg.norm(moment.derivatives))
 
 
 def _accuracy(initial: NormalModes, final: NormalModes, mapped: ModeMap) -> Accuracy:

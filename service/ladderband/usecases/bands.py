@@ -1,0 +1,422 @@
+"""The band on an axis: all lines of one or several species, broadened, on a scale."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ladderband.numerics.absolute_scale import SCALES, Scale, Strength, scale_factors, strength
+from ladderband.numerics.accuracy import Accuracy, Deadline
+from ladderband.numerics.axis import Axis, in_unit
+from ladderband.numerics.band import (
+    Density,
+    Sampling,
+    density,
+    plan_sampling,
+    reference_density,
+)
+from ladderband.numerics.errors import DomainError
+from ladderband.numerics.line_shape import Bath, Broadening, InstrumentFunction, broadening
+from ladderband.numerics.moments import vertical_energy
+from ladderband.numerics.reversal import reversed_transition
+from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.transition import Floats, Process, Transition
+from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
+from ladderband.usecases.limits import Limits
+
+MAX_TIMES = 2**18
+"""Samples of the correlation function in one band: a width of 1/20000 of the band's range."""
+
+ADVICE = "Give wider lines, a shorter axis, a larger tolerance or fewer bands in one request."
+
+_KEPT = KeptTransitions()
+
+
+@dataclass(frozen=True)
+class LineShape:
+    """Widths are full widths at half maximum in cm^-1; kind gaussian, lorentzian or voigt.
+
+    ``bath`` and ``instrument`` act on top of it. A kind other than voigt uses only its own width.
+    """
+
+    kind: str = "gaussian"
+    fwhm_cm1: float = 0.0
+    fwhm_lorentzian_cm1: float = 0.0
+    bath: Bath | None = None
+    instrument: InstrumentFunction | None = None
+
+    def at(self, temperature_k: float, direction: float) -> Broadening:
+        """The broadening at a temperature; raises DomainError without any width."""
+        gaussian = 0.0 if self.kind == "lorentzian" else self.fwhm_cm1
+        lorentzian = {"gaussian": 0.0, "lorentzian": self.fwhm_cm1}.get(
+            self.kind, self.fwhm_lorentzian_cm1
+        )
+        return broadening(
+            gaussian, lorentzian, self.bath, self.instrument, temperature_k, direction
+        )
+
+
+@dataclass(frozen=True)
+class Species:
+    """One conformer or species and its share (> 0; shares are scaled to sum 1).
+
+    On absolute scales the share is a mole fraction; on the others the share of the band's area.
+    """
+
+    transition: Transition
+    weight: float = 1.0
+
+
+@dataclass(frozen=True)
+class BandsQuestion:
+    """Bands of a mixture of species at one or several temperatures, on one axis.
+
+    ``temperatures_k`` empty: the species' own. ``both_directions`` adds the reverse process.
+    ``tolerance`` is the bound aimed at, relative to the maximum.
+    """
+
+    species: tuple[Species, ...]
+    axis: Axis
+    line_shape: LineShape
+    scale: Scale = "relative"
+    temperatures_k: tuple[float, ...] = ()
+    both_directions: bool = False
+    tolerance: float = 1e-6
+
+
+@dataclass(frozen=True)
+class BandMoments:
+    """Mean, standard deviation (cm^-1) and skewness on the wavenumber axis."""
+
+    mean_cm1: float
+    standard_deviation_cm1: float
+    skewness: float
+
+
+@dataclass(frozen=True)
+class Positions:
+    """Landmarks of one species' band in cm^-1; the vertical one leaves out zero-point motion."""
+
+    origin_cm1: float
+    vertical_cm1: float
+    first_moment_cm1: float
+
+
+@dataclass(frozen=True)
+class Band:
+    """One band: intensity (P,) in the order of the axis, and what belongs to it.
+
+    ``moments`` are those of the lines (closed form, bath's shift included); ``moments_on_axis``
+    those of the broadened band over the axis given (None where there is no intensity).
+    ``range_cm1`` holds all but 1e-6 of the lines.
+    """
+
+    process: Process
+    temperature_k: float
+    intensity: Floats
+    accuracy: Accuracy
+    moments: BandMoments
+    moments_on_axis: BandMoments | None
+    positions: tuple[Positions, ...]
+    strength: Strength
+    range_cm1: tuple[float, float]
+
+
+@dataclass(frozen=True)
+class BandsAnswer:
+    """The bands, direction by direction and within it temperature by temperature.
+
+    ``stokes_shift_cm1`` (one a temperature): mean of absorption minus mean of emission, when both
+    were asked.
+    """
+
+    axis: Axis
+    quantity_unit: str
+    bands: tuple[Band, ...]
+    stokes_shift_cm1: tuple[float, ...] = ()
+    warnings: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class _Part:
+    """One species of one band, planned."""
+
+    species: Species
+    share: float
+    kept: KeptTransition
+    shape: Broadening
+    sampling: Sampling
+    energies: Floats
+
+
+def bands(question: BandsQuestion, limits: Limits, deadline: Deadline) -> BandsAnswer:
+    """Answer one question.
+
+    Raises
+    ------
+    DomainError
+        No width, a scale that does not belong to the process, a moment of zero.
+    CostLimitExceeded
+        The estimate is above the limit.
+    PrecisionNotReached
+        Nothing could be proved in double precision.
+    DeadlineExceeded
+        The deadline passed.
+    """
+    groups = _groups(question)
+    limits.admit(estimate_seconds(question), ADVICE)
+    planned = []
+    for group in groups:
+        deadline.check()
+        planned.append([_part(question, species, group) for species in group])
+    limits.admit(sum(_seconds_left(part) for parts in planned for part in parts), ADVICE)
+    found = tuple(_band(question, parts, deadline) for parts in planned)
+    _KEPT.trim()
+    return BandsAnswer(
+        question.axis,
+        SCALES[question.scale].unit.format(axis=question.axis.unit),
+        found,
+        _stokes_shifts(question, found),
+        _warnings(question, found),
+    )
+
+
+def _groups(question: BandsQuestion) -> list[tuple[Species, ...]]:
+    """The species of each band: direction by direction, temperature by temperature."""
+    processes = {species.transition.process for species in question.species}
+    if len(processes) > 1:
+        raise DomainError(
+            "All species of one band share one process; these are " + ", ".join(sorted(processes)),
+            "/further_species",
+        )
+    directions = [question.species]
+    if question.both_directions:
+        directions.append(
+            tuple(
+                replace(species, transition=reversed_transition(species.transition))
+                for species in question.species
+            )
+        )
+    if not question.temperatures_k:
+        return directions
+    return [
+        tuple(
+            replace(species, transition=replace(species.transition, temperature_k=temperature))
+            for species in group
+        )
+        for group in directions
+        for temperature in question.temperatures_k
+    ]
+
+
+def estimate_seconds(question: BandsQuestion) -> float:
+    """Estimated seconds of work, without doing any.
+
+    Twelve standard deviations stand for the proven range, 3.5 decay times a width for the window.
+    """
+    bands_count = max(1, len(question.temperatures_k)) * (2 if question.both_directions else 1)
+    total = 2e-7 * len(question.axis.values) * len(question.species)
+    for species in question.species:
+        transition = species.transition
+        n = len(transition.modes)
+        f, s = transition.wavenumbers_final, transition.displacements**2 / 2.0
+        width = max(question.line_shape.fwhm_cm1, question.line_shape.fwhm_lorentzian_cm1, 1e-3)
+        reach = 12.0 * math.sqrt(float(s @ f**2) + 1.0) + 10.0 * width
+        times = min(2.0 * reach / width, float(MAX_TIMES))
+        total += 0.005 + 4e-9 * n**3 * (transition.mixing is not None)
+        total += times * seconds_a_time(n, transition.mixing is not None)
+    return bands_count * total
+
+
+def seconds_a_time(n: int, mixed: bool) -> float:
+    """Seconds of one time point of n modes, all mixed or none."""
+    return 2e-6 + (4.5e-10 * n**3 + 6e-8 * n**2 if mixed else 6e-9 * n)
+
+
+def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...]) -> _Part:
+    transition = species.transition
+    kept = _KEPT.get(transition)
+    shape = question.line_shape.at(transition.temperature_k, transition.direction)
+    rough = kept.energy_range(1e-6)
+    allowed = question.tolerance * reference_density(rough, shape)
+    outside = min(0.03 * allowed / shape.kernel_top, 1e-6)
+    energies = kept.energy_range(10.0 ** math.floor(math.log10(max(outside, 1e-300))))
+    wanted = transition.direction * (question.axis.wavenumbers - transition.origin_cm1)
+    sampling = plan_sampling(energies, shape, float(wanted.min()), float(wanted.max()), allowed)
+    if sampling.count > MAX_TIMES:
+        raise DomainError(
+            f"The lines are too narrow for the range of the band and axis: {sampling.count} time "
+            f"points would be needed, the limit is {MAX_TIMES}. {ADVICE}",
+            "/line_shape",
+        )
+    share = species.weight / sum(other.weight for other in group)
+    return _Part(species, share, kept, shape, sampling, wanted)
+
+
+def _seconds_left(part: _Part) -> float:
+    missing = max(0, part.sampling.count - part.kept.have(part.sampling.step))
+    modes = part.kept.modes
+    each = sum(seconds_a_time(len(block), mixed=True) for block in modes.mixed)
+    if modes.uncoupled is not None:
+        each += seconds_a_time(len(modes.uncoupled.g), mixed=False)
+    return missing * each + 1e-6 * part.sampling.count + 1e-6 * len(part.energies)
+
+
+def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Band:
+    axis = question.axis
+    process = parts[0].species.transition.process
+    plain, total, bound = np.zeros((3, len(axis.values)))
+    for part in parts:
+        found = _density(part, deadline)
+        factors = part.share * scale_factors(
+            question.scale, process, axis.wavenumbers, axis.jacobian, part.kept.modes.total
+        )
+        plain += part.share * found.value
+        total += factors * found.value
+        bound += factors * found.bound + 40.0 * UNIT_ROUNDOFF * np.abs(factors * found.value)
+    if question.scale == "relative":
+        total, bound = _relative(total, bound)
+    return Band(
+        process,
+        parts[0].species.transition.temperature_k,
+        total,
+        Accuracy(_compact(bound), "proven", "correlation function in time"),
+        _mixture_moments(question, parts),
+        _moments_on_axis(axis.wavenumbers, plain),
+        tuple(_positions(part) for part in parts),
+        _mixture_strength(question, process, parts),
+        _range(parts),
+    )
+
+
+def _density(part: _Part, deadline: Deadline) -> Density:
+    deadline.check()
+    return density(
+        lambda step, count: part.kept.correlation(step, count, deadline),
+        part.shape,
+        part.sampling,
+        part.energies,
+    )
+
+
+def _relative(total: Floats, bound: Floats) -> tuple[Floats, Floats]:
+    """Scale the largest value to 1; the true maximum may differ by its bound as well."""
+    top, worst = float(total.max()), float(bound.max())
+    if top <= 2.0 * worst:  # nothing on this axis that is told from zero
+        return np.zeros_like(total), np.ones_like(bound)
+    return total / top, (bound + worst) / (top - worst)
+
+
+def _compact(bound: Floats) -> float | Floats:
+    """One number where it is the same (to rounding) all over the axis."""
+    top = float(bound.max())
+    return top if float(bound.min()) > 0.5 * top else bound
+
+
+def _mixture_moments(question: BandsQuestion, parts: list[_Part]) -> BandMoments:
+    """Moments of all lines of all species, about their common mean."""
+    weights = np.array([part.share for part in parts])
+    if SCALES[question.scale].power:
+        weights = weights * np.array([part.kept.modes.total for part in parts])
+        weights = weights / weights.sum()
+    means = np.array([_positions(part).first_moment_cm1 for part in parts])
+    variances = np.array([part.kept.moments.variance for part in parts])
+    signs = np.array([part.species.transition.direction for part in parts])
+    thirds = signs * np.array([part.kept.moments.third for part in parts])
+    mean = float(weights @ means)
+    off = means - mean
+    variance = float(weights @ (variances + off**2))
+    third = float(weights @ (thirds + 3.0 * off * variances + off**3))
+    deviation = math.sqrt(max(variance, 0.0))
+    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+
+
+def _positions(part: _Part) -> Positions:
+    transition = part.species.transition
+    sign, origin = transition.direction, transition.origin_cm1
+    zero_points = 0.5 * float((transition.wavenumbers_final - transition.wavenumbers_initial).sum())
+    vertical = vertical_energy(transition) - zero_points + part.shape.shift
+    mean = part.kept.moments.mean + part.shape.shift
+    return Positions(origin, origin + sign * vertical, origin + sign * mean)
+
+
+def _moments_on_axis(wavenumbers: Floats, plain: Floats) -> BandMoments | None:
+    """Trapezoidal moments of the density over the axis, in cm^-1."""
+    order = np.argsort(wavenumbers)
+    x, y = wavenumbers[order], plain[order]
+    area = float(np.trapezoid(y, x)) if len(x) > 1 else 0.0
+    if area <= 1e-9:
+        return None
+    mean = float(np.trapezoid(y * x, x)) / area
+    variance = float(np.trapezoid(y * (x - mean) ** 2, x)) / area
+    third = float(np.trapezoid(y * (x - mean) ** 3, x)) / area
+    deviation = math.sqrt(max(variance, 0.0))
+    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+
+
+def _mixture_strength(question: BandsQuestion, process: Process, parts: list[_Part]) -> Strength:
+    """Shares as mole fractions: moments squared, oscillator strengths and rates add up."""
+    total, mean, cube = 0.0, 0.0, 0.0
+    for part in parts:
+        weight = part.share * part.kept.modes.total
+        position = _positions(part).first_moment_cm1
+        lines = part.kept.moments
+        sign = part.species.transition.direction
+        total += weight
+        mean += weight * position
+        cube += weight * (position**3 + 3.0 * position * lines.variance + sign * lines.third)
+    return strength(process, total, mean / total, cube / total)
+
+
+def _range(parts: list[_Part]) -> tuple[float, float]:
+    ends = []
+    for part in parts:
+        energies = part.kept.energy_range(1e-6)
+        sign, origin = part.species.transition.direction, part.species.transition.origin_cm1
+        ends += [origin + sign * (end + part.shape.shift) for end in (energies.low, energies.high)]
+    return min(ends), max(ends)
+
+
+def _stokes_shifts(question: BandsQuestion, found: tuple[Band, ...]) -> tuple[float, ...]:
+    if not question.both_directions:
+        return ()
+    half = len(found) // 2
+    return tuple(
+        (one.moments.mean_cm1 - other.moments.mean_cm1)
+        * (1.0 if one.process == "absorption" else -1.0)
+        for one, other in zip(found[:half], found[half:], strict=True)
+    )
+
+
+def _warnings(question: BandsQuestion, found: tuple[Band, ...]) -> tuple[str, ...]:
+    notes = []
+    unit = question.axis.unit
+    low, high = float(question.axis.wavenumbers.min()), float(question.axis.wavenumbers.max())
+    for band in found:
+        first, last = band.range_cm1
+        if high < first or low > last:
+            ends = sorted((in_unit(first, unit), in_unit(last, unit))) if first > 0.0 else None
+            where = f" ({ends[0]:.6g} to {ends[1]:.6g} {unit})" if ends and unit != "cm-1" else ""
+            notes.append(
+                f"The axis lies outside the {band.process} band: its lines range from {first:.6g} "
+                f"to {last:.6g} cm-1{where}."
+            )
+        area = _area(band, question)
+        if question.scale == "unit_area" and area is not None and area < 0.99:
+            notes.append(
+                f"The axis holds {100.0 * area:.3g} % of the {band.process} band's area; "
+                "the area is 1 over all wavenumbers."
+            )
+    if question.scale in ("molar_absorption_coefficient", "cross_section", "photon_rate") and any(
+        species.transition.moment is None for species in question.species
+    ):
+        notes.append("No moment was given: the scale is that of a transition moment of 1 debye.")
+    return tuple(notes)
+
+
+def _area(band: Band, question: BandsQuestion) -> float | None:
+    if question.scale != "unit_area" or len(question.axis.values) < 2:
+        return None
+    return float(np.trapezoid(band.intensity, question.axis.values))
