@@ -38,6 +38,14 @@ def _spin(request: Request, deadline: Deadline) -> Request:
     return {"x": x, "y": math.sin(x) / 3.0, "z": math.exp(-x * 1e-3)}
 
 
+def _work(request: Request, deadline: Deadline) -> Request:
+    """A fixed amount of arithmetic."""
+    x = y = request["x"]
+    for _ in range(request["steps"]):
+        y = y * 0.999 + 0.5
+    return {"x": x, "y": y}
+
+
 def mark(request: Request) -> None:
     """Append a line to a file, so that tests can count what was computed."""
     if "mark" in request:
@@ -70,7 +78,7 @@ def _estimate(request: Request) -> float:
 
 
 def kinds() -> dict[str, Kind]:
-    answers = [_add, _sleep, _spin, _crash, _hog, _refuse]
+    answers = [_add, _sleep, _spin, _work, _crash, _hog, _refuse]
     return {a.__name__[1:]: _kind(a) for a in answers}
 
 

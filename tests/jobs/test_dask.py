@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-import signal
+import random
 import socket
 import subprocess
 import sys
@@ -121,22 +121,38 @@ def test_a_crash_ends_its_job_and_no_worker(database: Database, cluster: Cluster
     assert all(process.poll() is None for process in cluster.workers)
 
 
+def disturbed(cluster: Cluster, victim: str) -> None:
+    """Kill one worker, or the scheduler, and start what was lost."""
+    if victim == "worker":
+        cluster.workers[0].kill()
+        cluster.workers.pop(0).wait()
+        cluster.workers.append(cluster.start_worker())
+        return
+    cluster.scheduler.kill()
+    cluster.scheduler.wait()
+    time.sleep(0.3)
+    cluster.scheduler = cluster.start_scheduler()
+
+
 @pytest.mark.parametrize("victim", ["worker", "scheduler"])
+@pytest.mark.parametrize(
+    ("points", "kills"),
+    [(300, 1), pytest.param(2000, 10, marks=pytest.mark.slow)],
+    ids=["once", "ten times"],
+)
 def test_killing_a_part_of_the_cluster_loses_nothing(
-    database: Database, cluster: Cluster, tmp_path: Path, victim: str
+    database: Database, cluster: Cluster, tmp_path: Path, victim: str, points: int, kills: int
 ) -> None:
-    values = [i / 7 for i in range(300)]
+    values = [i / 7 for i in range(points)]
     job = sweep(database, "spin", {"seconds": 0.01}, values, ["/x", "/y", "/z"])
+    moments = random.Random(victim)
     with at_work(database, cluster):
         until(lambda: view(database, job.id).done > 0, 60)
-        if victim == "worker":
-            cluster.workers[0].send_signal(signal.SIGKILL)
-            cluster.workers.append(cluster.start_worker())
-        else:
-            cluster.scheduler.send_signal(signal.SIGKILL)
-            cluster.scheduler.wait()
-            time.sleep(0.5)
-            cluster.scheduler = cluster.start_scheduler()
-            cluster.workers += [cluster.start_worker() for _ in range(2)]
-        assert ended(database, job, 100).state == "succeeded"
+        for _ in range(kills):
+            disturbed(cluster, victim)
+            done = view(database, job.id).done
+            # the next kill only once the cluster works again, else nothing would be disturbed
+            until(lambda done=done: view(database, job.id).done > done, 60)
+            time.sleep(moments.uniform(0.0, 0.5))
+        assert ended(database, job, 200).state == "succeeded"
     assert table(database, job) == undisturbed(tmp_path, values)

@@ -21,10 +21,10 @@ from dataclasses import dataclass, field
 log = logging.getLogger("ladderband.supervisor")
 
 POLL_S = 0.1
-STEADY_S = 10.0
+STEADY_S = 3.0
 """A process that lived this long is restarted at once; a younger one after a growing pause."""
 
-LONGEST_PAUSE_S = 30.0
+LONGEST_PAUSE_S = 5.0
 
 _LIBC = ctypes.CDLL(None) if sys.platform == "linux" else None
 _PR_SET_PDEATHSIG = 1

@@ -10,6 +10,7 @@ from ladderband.formats.json_stream import require_finite
 from ladderband.formats.stored import dump_answer
 from ladderband.jobs.kinds import Document, Kind, Refused
 from ladderband.numerics.accuracy import Deadline
+from ladderband.numerics.warm import warm
 from ladderband.settings import load_settings
 from ladderband.usecases.limits import Limits
 from ladderband.web.problems import members_of
@@ -18,7 +19,8 @@ from ladderband.web.resources import RESOURCES
 
 
 def kinds() -> dict[str, Kind]:
-    """Every compute resource by its name, with the limits of jobs."""
+    """Every compute resource by its name, with the limits of jobs; compiled kernels are loaded."""
+    warm()
     settings = load_settings()
     limits = Limits(work_s=settings.job_work_s, table_elements=settings.table_elements)
     return {resource.name: _kind(resource, limits) for resource in RESOURCES}
