@@ -336,6 +336,15 @@ def test_cancelling_and_what_follows(service: Service) -> None:
     assert (result.status_code, result.json["state"]) == (409, "cancelled")
 
 
+def test_operators_see_jobs_and_engines(service: Service) -> None:
+    until(lambda: service.client.get("/readyz").json == {"status": "ready", "engines": 1})
+    assert "ladderband_engines 1" in service.client.get("/metrics").text
+    service.lazy.post("/v1/overlaps", json={**OVERLAPS, "displacement": 5.0}, headers=ASYNC)
+    text = service.lazy.get("/metrics").text
+    queued = next(line for line in text.splitlines() if line.startswith("ladderband_jobs{"))
+    assert int(queued.split()[1]) >= 1
+
+
 def test_unknown_jobs_are_not_found(service: Service) -> None:
     for answer in (
         service.client.get("/v1/jobs/j0"),

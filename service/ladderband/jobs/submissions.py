@@ -21,7 +21,16 @@ from ladderband.jobs.errors import (
     QueueFull,
     TokenMismatch,
 )
-from ladderband.jobs.records import BATCH, FINAL_STATES, OPEN_STATES, job, shard, token, turn
+from ladderband.jobs.records import (
+    BATCH,
+    FINAL_STATES,
+    OPEN_STATES,
+    engine,
+    job,
+    shard,
+    token,
+    turn,
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -262,6 +271,25 @@ def listed(
         rows = connection.execute(query.order_by(job.c.created.desc()).limit(limit)).all()
         now = database.now(connection)
     return [_as_view(row, now) for row in rows]
+
+
+@dataclass(frozen=True, slots=True)
+class Overview:
+    """What is going on at the moment: unfinished jobs by state, engines that gave a sign of life."""
+
+    queued: int
+    running: int
+    engines: int
+
+
+def overview(database: Database, alive_s: float = 60.0) -> Overview:
+    """Counts for operators; reads unfinished jobs only."""
+    with database.reading() as connection:
+        states = sa.select(job.c.state, sa.func.count()).where(job.c.state.in_(OPEN_STATES))
+        counts = {row[0]: row[1] for row in connection.execute(states.group_by(job.c.state))}
+        alive = sa.select(sa.func.count()).select_from(engine)
+        engines = connection.scalar(alive.where(engine.c.seen > database.now(connection) - alive_s))
+    return Overview(counts.get("queued", 0), counts.get("running", 0), engines or 0)
 
 
 def request_of(database: Database, job_id: str) -> bytes | None:
