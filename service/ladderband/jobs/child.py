@@ -8,29 +8,17 @@ from __future__ import annotations
 
 import argparse
 import contextlib
-import ctypes
 import gc
 import os
 import resource
 import signal
-import sys
 from multiprocessing.connection import Connection
 
 import orjson
 
 from ladderband.jobs.kinds import load_kinds
+from ladderband.jobs.parents import die_with_parent
 from ladderband.jobs.work import perform
-
-PR_SET_PDEATHSIG = 1
-
-
-def die_with_parent(parent: int) -> None:
-    """Ask the system to kill this process when its parent ends (Linux; elsewhere the pipe's end
-    does it as soon as the process looks)."""
-    if sys.platform == "linux":
-        ctypes.CDLL(None, use_errno=True).prctl(PR_SET_PDEATHSIG, signal.SIGKILL)
-        if os.getppid() != parent:  # it ended before the call
-            os._exit(1)
 
 
 def _arguments() -> argparse.Namespace:

@@ -8,15 +8,16 @@ inside of one would be worth nothing.
 
 from __future__ import annotations
 
-import ctypes
 import logging
 import os
 import signal
 import subprocess
-import sys
 import time
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import partial
+
+from ladderband.jobs.parents import die_with_parent
 
 log = logging.getLogger("ladderband.supervisor")
 
@@ -25,9 +26,6 @@ STEADY_S = 3.0
 """A process that lived this long is restarted at once; a younger one after a growing pause."""
 
 LONGEST_PAUSE_S = 5.0
-
-_LIBC = ctypes.CDLL(None) if sys.platform == "linux" else None
-_PR_SET_PDEATHSIG = 1
 
 
 @dataclass
@@ -50,7 +48,8 @@ class Ward:
             env={**os.environ, **self.environment},
             pass_fds=self.keep_fds,
             process_group=0,
-            preexec_fn=_die_with_parent,
+            # safe here: the supervisor has one thread
+            preexec_fn=partial(die_with_parent, os.getpid()),
         )
 
     def look(self) -> None:
@@ -80,12 +79,6 @@ class Ward:
             os.killpg(self.process.pid, number)
         except (ProcessLookupError, PermissionError):
             return
-
-
-def _die_with_parent() -> None:
-    """Runs in the new process before its program; safe, as the supervisor has one thread."""
-    if _LIBC is not None:
-        _LIBC.prctl(_PR_SET_PDEATHSIG, signal.SIGKILL)
 
 
 class Supervisor:

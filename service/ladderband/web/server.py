@@ -11,6 +11,7 @@ from flask import Flask
 from gunicorn.app.base import BaseApplication
 from prometheus_client.multiprocess import mark_process_dead
 
+from ladderband.jobs.parents import die_with_parent
 from ladderband.settings import Settings, load_settings
 
 LISTENER = "LADDERBAND_LISTENER"
@@ -40,6 +41,7 @@ class Server(BaseApplication):  # type: ignore[misc]
             "proc_name": "ladderband",
             "loglevel": "warning",
             "worker_tmp_dir": "/dev/shm" if os.access("/dev/shm", os.W_OK) else None,
+            "post_fork": lambda server, worker: die_with_parent(server.pid),
             "post_worker_init": self._ready,
             "child_exit": lambda server, worker: _forget(worker.pid),
             "on_exit": _remove_counters,

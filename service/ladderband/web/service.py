@@ -18,7 +18,7 @@ KINDS_VARIABLE = "LADDERBAND_KINDS"
 
 REFERENCE = "ladderband.web.kinds:kinds"
 
-BIND_S = 5.0
+BIND_S = 10.0
 """How long an address may still be held by the web processes of a supervisor that was killed."""
 
 ENGINE_GRACE_S = 5.0
