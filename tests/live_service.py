@@ -13,6 +13,7 @@ import threading
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
+from typing import IO
 
 KERNELS = Path(tempfile.gettempdir()) / f"ladderband-tests-{os.getuid()}"
 ADDRESS = re.compile(rb"Ladderband answers at (http://\S+)")
@@ -36,7 +37,8 @@ def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
     """``ladderband serve`` on a free port with further options."""
     command = [sys.executable, "-m", "ladderband", "serve", "--port", "0"]
     command += ["--data-dir", str(data_dir), "--no-log-requests", *options]
-    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.DEVNULL)
+    errors = tempfile.TemporaryFile()
+    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=errors)
     assert process.stdout is not None
     # a watchdog instead of a timed read: a cold kernel cache may take a minute
     watchdog = threading.Timer(150.0, process.kill)
@@ -44,7 +46,7 @@ def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
     try:
         line = process.stdout.readline()
         found = ADDRESS.search(line)
-        assert found, f"the service did not start: {line!r}"
+        assert found, "the service did not start: " + _tail(errors)
         watchdog.cancel()
         yield LiveServer(found[1].decode(), process)
     finally:
@@ -53,3 +55,9 @@ def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
             process.terminate()
             process.wait(30)
         process.stdout.close()
+        errors.close()
+
+
+def _tail(errors: IO[bytes]) -> str:
+    errors.seek(0)
+    return errors.read()[-2000:].decode(errors="replace")

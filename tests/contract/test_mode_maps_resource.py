@@ -12,7 +12,7 @@ import pytest
 from qcelemental.models import v1
 
 from ladderband.numerics.normal_modes import normal_modes
-from ladderband.numerics.units import BOHR_ANGSTROM
+from ladderband.numerics.units import BOHR_ANGSTROM, HARTREE_CM1
 from ladderband.schemas.transition import TransitionSchema
 from spring_molecules import BENT, document, spring_hessian
 
@@ -280,3 +280,49 @@ def test_the_same_question_has_the_same_digest(client):
     assert asked(client, body)["request_digest"] == asked(client, body)["request_digest"]
     warmer = asked(client, {**body, "temperature_k": 10.0})
     assert warmer["request_digest"] != asked(client, body)["request_digest"]
+
+
+def band_of(client, transition):
+    start = transition["origin_cm1"] - 5000.0
+    axis = {"unit": "cm-1", "start": start, "stop": start + 35000.0, "points": 300}
+    line_shape = {"kind": "gaussian", "fwhm_cm1": 400.0}
+    answer = client.post("/v1/bands", json={**transition, "axis": axis, "line_shape": line_shape})
+    assert answer.status_code == 200, answer.text
+    return answer.json
+
+
+@pytest.mark.parametrize("molecule", ["water", "ammonia"])
+def test_the_mean_of_the_displaced_band_is_the_computed_vertical_energy(client, molecule):
+    # equal wavenumbers: the mean is the origin plus the reorganisation energy at any temperature
+    # (Lax, J. Chem. Phys. 20, 1752 (1952)), here the difference of two PySCF energies
+    names = (f"{molecule}_neutral", f"{molecule}_cation_gradient")
+    states = dict(zip(("initial", "final"), map(as_document, names), strict=True))
+    answer = asked(client, {"process": "photoelectron", "temperature_k": 300.0, **states})
+    low, high = (document(name)["properties"]["return_energy"] for name in names)
+    mean = band_of(client, answer["transition"])["moments"]["mean_cm1"]
+    assert mean == pytest.approx((high - low) * HARTREE_CM1, abs=1e-3)
+
+
+@pytest.mark.parametrize("molecule", ["water", "ammonia"])
+def test_the_mean_of_a_mixed_band_is_vertical_plus_what_the_zero_points_change(client, molecule):
+    # 1/4 Tr(J^T F^2 J G^-1) + 1/4 sum g - 1/2 sum f over the vertical energy, less the zero points
+    # that the 0-0 line holds, with the orthogonal J of the transition
+    names = (f"{molecule}_neutral", f"{molecule}_cation")
+    states = dict(zip(("initial", "final"), map(as_document, names), strict=True))
+    answer = asked(client, {"process": "photoelectron", **states})
+    transition, energies = answer["transition"], answer["energies"]
+    g, f = (np.array(answer["modes"][f"wavenumber_{s}_cm1"]) for s in ("initial", "final"))
+    mixing = np.array(transition["mixing"])
+    kinetic = 0.25 * ((mixing**2 * f[:, None] ** 2 / g[None]).sum() - g.sum())
+    mean = band_of(client, transition)["moments"]["mean_cm1"]
+    assert mean == pytest.approx(energies["vertical_cm1"] + kinetic, abs=1e-3)
+
+
+def test_a_moment_that_varies_is_taken_by_bands(client):
+    states = {"initial": as_document("water_neutral"), "final": as_document("water_cation")}
+    slopes = (np.outer(np.arange(9.0), [1.0, 0.0, 0.5]) - [4.0, 0.0, 2.0]).tolist()
+    dipole = {"constant_debye": [0.0, 0.0, 0.4], "derivatives_debye_angstrom": slopes}
+    answer = asked(client, {**states, "transition_dipole": dipole})
+    moment = answer["transition"]["moment"]
+    assert np.shape(moment["slopes_debye"]) == (3, 3)
+    assert max(band_of(client, answer["transition"])["intensity"]) > 0.0

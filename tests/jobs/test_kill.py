@@ -92,6 +92,10 @@ class Tree:
                 time.sleep(0.1)
 
 
+def living(processes: list[psutil.Process]) -> list[psutil.Process]:
+    return [p for p in processes if p.is_running() and p.status() != psutil.STATUS_ZOMBIE]
+
+
 def start(database_url: str, folder: Path, port: int) -> subprocess.Popen[bytes]:
     command = [sys.executable, "-m", "ladderband", "serve", "--port", str(port)]
     command += ["--database-url", database_url, "--data-dir", str(folder)]
@@ -112,7 +116,7 @@ def tree(database_url: str, tmp_path: Path) -> Iterator[Tree]:
         everything = psutil.Process(made.process.pid).children(recursive=True)
         made.process.send_signal(signal.SIGTERM)
         made.process.wait(40)
-        assert not [p for p in everything if p.is_running()]
+        assert not living(everything)
 
 
 def submitted(tree: Tree, points: int) -> dict[str, Any]:

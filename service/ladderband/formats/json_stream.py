@@ -12,25 +12,28 @@ import orjson
 BLOCK = 65536
 """Numbers encoded at a time: about 1.3 MB of text."""
 _OPTIONS = orjson.OPT_SERIALIZE_NUMPY
+_NEVER_INFINITE = frozenset({str, int, bool})
 
 
 class NotFinite(ArithmeticError):
     """A result holds NaN or infinity; orjson would write it as null without a word."""
 
 
-def json_chunks(members: Mapping[str, Any]) -> Iterator[bytes]:
-    """The JSON object of ``members`` in pieces; arrays may have any shape.
+def json_chunks(members: Mapping[str, Any]) -> bytes | Iterator[bytes]:
+    """The JSON object of ``members``, in pieces when it is large; arrays may have any shape.
 
     Raises
     ------
     NotFinite
         Before the first piece, when an array or a number is not finite.
     """
-    for name, value in members.items():
-        require_finite(name, value)
-    if not any(_is_large(value) for value in members.values()):
-        return iter((orjson.dumps(members, option=_OPTIONS, default=_contiguous),))
-    return _streamed(members)
+    if any(_is_large(value) for value in members.values()):
+        require_finite("answer", members)
+        return _streamed(members)
+    whole = orjson.dumps(members, option=_OPTIONS, default=_contiguous)
+    if b"null" in whole:  # written for NaN as well as for None and inside of strings
+        require_finite("answer", members)
+    return whole
 
 
 def _streamed(members: Mapping[str, Any]) -> Iterator[bytes]:
@@ -87,9 +90,13 @@ def require_finite(name: str, value: Any) -> None:
     elif isinstance(value, float):
         if not np.isfinite(value):
             raise NotFinite(name)
-    elif isinstance(value, dict):
+    elif isinstance(value, Mapping):
         for key, inner in value.items():
             require_finite(f"{name}.{key}", inner)
+    elif isinstance(value, (list, tuple)):
+        if not set(map(type, value)) <= _NEVER_INFINITE:
+            for index, inner in enumerate(value):
+                require_finite(f"{name}.{index}", inner)
     elif dataclasses.is_dataclass(value) and not isinstance(value, type):
         for item in dataclasses.fields(value):
             require_finite(f"{name}.{item.name}", getattr(value, item.name))

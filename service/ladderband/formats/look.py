@@ -19,6 +19,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.backends.backend_svg import FigureCanvasSVG
 from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
+from matplotlib.font_manager import FontProperties, findfont, get_font
 
 from ladderband.formats.sheet import Sheet
 
@@ -104,8 +105,9 @@ def _png(figure: Figure) -> bytes:
 
 
 def _plain(text: str) -> str:
-    """Text in which nothing starts a formula."""
-    return text.replace("$", r"\$")
+    """Text in which nothing starts a formula, and what our font lacks is a box."""
+    glyphs = get_font(findfont(FontProperties())).get_charmap()
+    return "".join(char if ord(char) in glyphs else "\u25a1" for char in text).replace("$", r"\$")
 
 
 def axes(figure: Figure, look: Look, *place: Any, **shared: Any) -> Axes:

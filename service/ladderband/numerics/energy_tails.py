@@ -50,7 +50,15 @@ class _Growth:
 
 
 def log_growth(modes: CoupledModes, theta: float) -> float:
-    """An upper bound of ln <exp(theta (E_n - E_v))>; infinity where none is proved."""
+    """An upper bound of ln <exp(theta (E_n - E_v))>; infinity where none is proved.
+
+    theta <= -1 / (k T) is not tried: q would reach 1.
+    """
+    columns: list[ModeBlock | UncoupledModes] = [*modes.mixed]
+    if modes.uncoupled is not None:
+        columns.append(modes.uncoupled)
+    if any((part.exponents + theta * part.g).min() <= 0.0 for part in columns):
+        return math.inf
     parts = [_matrix_growth(block, theta) for block in modes.mixed]
     if modes.uncoupled is not None:
         parts.append(_column_growth(modes.uncoupled, theta))

@@ -127,14 +127,14 @@ class Broadening:
 
     def slope(self, time: float) -> float:
         """-d ln size / dt at ``time``; it never falls later on."""
-        slope = self.sigma**2 * time + self.gamma
+        slope: float = self.sigma**2 * time + self.gamma
         if self.rate:
             slope -= self.slow.real * self.rate * math.expm1(-self.rate * time)
         return slope
 
     def end(self, allowed: float) -> float:
         """A time T with (1/pi) integral_T^inf |decay| dt <= allowed: size(T)/(pi slope(T))."""
-        low, high = 0.0, 1.0 / max(self.sigma, self.gamma, self.rate * abs(self.slow) ** 0.5)
+        low, high = 0.0, 1.0 / max(self.sigma, self.gamma, self.rate * math.sqrt(abs(self.slow)))
         while self.beyond(high) > allowed:
             low, high = high, 2.0 * high
         for _ in range(30):

@@ -129,7 +129,7 @@ def _tau_series(g: Floats, exponents: Floats) -> Series:
 
 
 def _product(left: Series, right: Series) -> Series:
-    return [sum(left[j] @ right[k - j] for j in range(k + 1)) for k in range(ORDER)]
+    return [np.sum([left[j] @ right[k - j] for j in range(k + 1)], axis=0) for k in range(ORDER)]
 
 
 def _inverse(series: Series) -> Series:

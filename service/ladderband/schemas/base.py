@@ -6,7 +6,7 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any, Generic, TypeVar
 
-from marshmallow import RAISE, Schema, ValidationError
+from marshmallow import RAISE, Schema, ValidationError, missing
 
 from ladderband.schemas.fields import Complaint, Part, Reply
 
@@ -34,8 +34,46 @@ class StrictSchema(Schema):
         super().__init__(**kwargs)
         known = ", ".join(sorted(self.fields))
         unknown = Complaint("This member is not known.", f"members: {known}")
-        self.error_messages["unknown"] = unknown  # type: ignore[assignment]
-        self.error_messages["type"] = Complaint("This is not an object.", "an object")  # type: ignore[assignment]
+        self._unknown = [unknown]
+        self._members = [
+            (name, field, field.required, field.load_default) for name, field in self.fields.items()
+        ]
+
+    def load(self, data: Any, **options: Any) -> dict[str, Any]:
+        """Checked members; replaces marshmallow's engine, whose passes for hooks and for partial
+        loading cost four times as much as the checks themselves in a small body.
+
+        So there are no hooks and no ``validate=`` here: a field checks itself in ``_deserialize``,
+        members together are checked where the question is built.
+
+        Raises
+        ------
+        ValidationError
+            Its messages name every member that is wrong, missing or unknown.
+        """
+        if type(data) is not dict:
+            raise ValidationError([Complaint("This is not an object.", "an object")])
+        loaded: dict[str, Any] = {}
+        wrong: dict[str, Any] = {}
+        seen = 0
+        for name, field, required, default in self._members:
+            if name not in data:
+                if required:
+                    wrong[name] = field.error_messages["required"]
+                elif default is not missing:
+                    loaded[name] = default
+                continue
+            seen += 1
+            value = data[name]
+            try:
+                loaded[name] = _not_null(field, value)._deserialize(value, name, data)
+            except ValidationError as error:
+                wrong[name] = error.messages
+        if seen != len(data):
+            wrong |= {name: self._unknown for name in data if name not in self.fields}
+        if wrong:
+            raise ValidationError(wrong)
+        return loaded
 
     def chosen(self, data: Mapping[str, Any]) -> str:
         """The one given member of ``exactly_one_of``.
@@ -54,6 +92,12 @@ class StrictSchema(Schema):
             raise ValidationError({self.exactly_one_of[0]: [Complaint(detail, allowed)]})
         detail = "Give only one of " + ", ".join(given) + "."
         raise ValidationError({given[-1]: [Complaint(detail, allowed)]})
+
+
+def _not_null(field: Any, value: Any) -> Any:
+    if value is None:
+        raise ValidationError(field.error_messages["null"])
+    return field
 
 
 class RequestSchema(StrictSchema, Generic[Question]):

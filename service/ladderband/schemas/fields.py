@@ -19,6 +19,7 @@ from marshmallow import ValidationError, fields
 from ladderband.numerics.oscillators import Column
 from ladderband.schemas.ranges import Range
 
+CONTROL = re.compile("[\x00-\x1f]")
 NUMERIC = frozenset({int, float})
 NUMERIC_OR_TEXT = frozenset({int, float, str})
 
@@ -121,7 +122,7 @@ class Text(Described):
             raise self.refuse("This is not a string.")
         if len(value) > self.max_length:
             raise self.refuse(f"This string has {len(value)} characters.")
-        if not value.isprintable():
+        if CONTROL.search(value):
             raise self.refuse("This string holds control characters.")
         return value
 
@@ -321,12 +322,20 @@ class Objects(fields.Nested):
         self.error_messages["required"] = [Complaint("This member is required.", self.allowed)]
         self.error_messages["null"] = [Complaint("null is not allowed here.", self.allowed)]
 
-    def _deserialize(self, value: Any, attr: Any, data: Any, partial: Any = None, **kw: Any) -> Any:
+    def _deserialize(self, value: Any, attr: Any, data: Any, *_: Any, **kwargs: Any) -> Any:
         if type(value) is not list:
             raise ValidationError([Complaint("This is not a list.", self.allowed)])
         if not 1 <= len(value) <= self.max_size:
             raise ValidationError([Complaint(f"This list has {len(value)} entries.", self.allowed)])
-        return super()._deserialize(value, attr, data, partial=partial, **kw)
+        loaded, wrong = [], {}
+        for index, entry in enumerate(value):
+            try:
+                loaded.append(self.schema.load(entry))
+            except ValidationError as error:
+                wrong[index] = error.messages
+        if wrong:
+            raise ValidationError(wrong)
+        return loaded
 
     def json_schema(self) -> dict[str, Any]:
         return {"minItems": 1, "maxItems": self.max_size}
@@ -339,6 +348,9 @@ class Part(fields.Nested):
         super().__init__(schema, metadata={"description": description}, **kwargs)
         self.error_messages["required"] = [Complaint("This member is required.", "an object")]
         self.error_messages["null"] = [Complaint("null is not allowed here.", "an object")]
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, *_: Any, **kwargs: Any) -> Any:
+        return self.schema.load(value)
 
     def json_schema(self) -> dict[str, Any]:
         return {}

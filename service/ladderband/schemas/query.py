@@ -16,6 +16,8 @@ from ladderband.schemas.base import StrictSchema
 from ladderband.schemas.fields import DECIMAL_TEXT, Complaint, Described, Number, Text
 from ladderband.schemas.ranges import Range
 
+QUERY_LIST_LENGTH = 400
+
 
 def number_of(text: str) -> float | None:
     """The double of a decimal text, None when it is not one; 400 characters at most."""
@@ -67,7 +69,9 @@ class QueryList(Described):
         super().__init__(description, **kwargs)
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> list[float]:
-        parts = value[:10_000].split(",")
+        if len(value) > QUERY_LIST_LENGTH:
+            raise self.refuse(f"This text has {len(value)} characters.")
+        parts = value.split(",")
         if len(parts) > self.max_size:
             raise self.refuse(f"This list has {len(parts)} entries.")
         numbers = [number_of(part.strip()) for part in parts]
@@ -76,7 +80,11 @@ class QueryList(Described):
         return numbers  # type: ignore[return-value]
 
     def json_schema(self) -> dict[str, Any]:
-        return {"type": "string", "pattern": r"^[-+0-9.eE]+(,[-+0-9.eE]+)*$", "maxLength": 10_000}
+        return {
+            "type": "string",
+            "pattern": r"^[-+0-9.eE]+(,[-+0-9.eE]+)*$",
+            "maxLength": QUERY_LIST_LENGTH,
+        }
 
 
 class QuerySchema(StrictSchema):

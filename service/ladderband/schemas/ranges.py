@@ -45,7 +45,7 @@ MAX_QUANTA = 2000
 MAX_DIGITS = 1000
 MAX_MODES = 400
 
-WAVENUMBER = Range(0.0, 1e5, low_open=True)
+WAVENUMBER = Range(1e-3, 1e5)  # cm^-1; below, kT / h c nu leaves double range
 WAVENUMBER_RATIO = Range(1 / 50, 50.0)  # final / initial
 HUANG_RHYS = Range(0.0, 2000.0)
 DISPLACEMENT = Range(-63.25, 63.25)  # S = 2000 is a displacement of 63.2456

@@ -133,7 +133,7 @@ class BandsAnswer:
     """
 
     axis: Axis
-    quantity_unit: str
+    intensity_unit: str
     bands: tuple[Band, ...]
     stokes_shift_cm1: tuple[float, ...] = ()
     warnings: tuple[str, ...] = ()
@@ -282,7 +282,7 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
         process,
         parts[0].species.transition.temperature_k,
         total,
-        Accuracy(_compact(bound), "proven", "correlation function in time"),
+        Accuracy(float(bound.max()), "proven", "correlation function in time"),
         _mixture_moments(question, parts),
         _moments_on_axis(axis.wavenumbers, plain),
         tuple(_positions(part) for part in parts),
@@ -307,12 +307,6 @@ def _relative(total: Floats, bound: Floats) -> tuple[Floats, Floats]:
     if top <= 2.0 * worst:  # nothing on this axis that is told from zero
         return np.zeros_like(total), np.ones_like(bound)
     return total / top, (bound + worst) / (top - worst)
-
-
-def _compact(bound: Floats) -> float | Floats:
-    """One number where it is the same (to rounding) all over the axis."""
-    top = float(bound.max())
-    return top if float(bound.min()) > 0.5 * top else bound
 
 
 def _mixture_moments(question: BandsQuestion, parts: list[_Part]) -> BandMoments:

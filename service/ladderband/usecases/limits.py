@@ -25,6 +25,18 @@ class CostLimitExceeded(UseCaseError):
         self.limit_s = limit_s
 
 
+class AnswerTooLarge(UseCaseError):
+    """The tables asked for hold more numbers than one answer may; nothing was computed."""
+
+    def __init__(self, numbers: int, limit: int) -> None:
+        super().__init__(
+            f"The tables of this request hold {numbers} numbers; the limit for one request is "
+            f"{limit}. Ask for fewer quanta, or for fewer pairs in one request."
+        )
+        self.numbers = numbers
+        self.limit = limit
+
+
 @dataclass(frozen=True, slots=True)
 class Limits:
     """Limits of one request; the defaults are the documented ones, settings override them."""
@@ -35,6 +47,11 @@ class Limits:
     """Oscillator pairs in one request."""
     table_elements: int = 4_100_000
     """Numbers in one table answer, all pairs together."""
+
+    def admit_table(self, numbers: int) -> None:
+        """Raise AnswerTooLarge when one table of the answer holds more numbers than allowed."""
+        if numbers > self.table_elements:
+            raise AnswerTooLarge(numbers, self.table_elements)
 
     def admit(self, estimate_s: float, advice: str) -> None:
         """Raise CostLimitExceeded when the estimate is above the limit."""

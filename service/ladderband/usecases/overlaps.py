@@ -85,6 +85,8 @@ def overlaps(question: OverlapsQuestion, limits: Limits, deadline: Deadline) -> 
 
     Raises
     ------
+    AnswerTooLarge
+        The tables hold more numbers than the limit.
     CostLimitExceeded
         The estimate is above the limit.
     PrecisionNotReached
@@ -92,6 +94,8 @@ def overlaps(question: OverlapsQuestion, limits: Limits, deadline: Deadline) -> 
     DeadlineExceeded
         The deadline passed.
     """
+    rows, columns = question.v_initial_max + 1, question.v_final_max + 1
+    limits.admit_table(len(question.pairs) * rows * columns)
     limits.admit(
         estimate_seconds(question), "Ask for fewer quanta, digits or pairs in one request."
     )

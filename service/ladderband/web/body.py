@@ -7,10 +7,10 @@ whole; and orjson keeps the last of repeated members. Both are checked here.
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
 from typing import Any
 
 import orjson
-from flask import Request
 
 from ladderband.web.problems import BodyTooLarge, MalformedJson, UnsupportedMediaType
 
@@ -18,33 +18,44 @@ BLOCK = 65536
 PLAIN = frozenset({int, float, str, bool, type(None)})
 
 
-def read_json(request: Request, max_bytes: int, max_depth: int) -> Any:
-    """The parsed JSON body of a request.
+def read_json(environ: Mapping[str, Any], max_bytes: int, max_depth: int) -> Any:
+    """The parsed JSON body of a WSGI request.
 
     Raises
     ------
     UnsupportedMediaType, BodyTooLarge, MalformedJson
         See the classes.
     """
-    kind = request.mimetype
-    if kind != "application/json" and not kind.endswith("+json"):
+    kind = environ.get("CONTENT_TYPE", "")
+    if kind != "application/json" and not _is_json(kind):
         raise UnsupportedMediaType(
             f"The media type is {kind[:80] or 'missing'}.", allowed="application/json"
         )
-    if request.headers.get("Content-Encoding", "identity") != "identity":
+    if environ.get("HTTP_CONTENT_ENCODING", "identity") != "identity":
         raise UnsupportedMediaType("Encoded bodies are not read.", allowed="application/json")
-    return parse(read_bytes(request, max_bytes), max_depth)
+    return parse(read_bytes(environ, max_bytes), max_depth)
 
 
-def read_bytes(request: Request, max_bytes: int) -> bytes:
+def _is_json(kind: str) -> bool:
+    media = kind.partition(";")[0].strip().lower()
+    return media == "application/json" or (
+        media.startswith("application/") and media.endswith("+json")
+    )
+
+
+def read_bytes(environ: Mapping[str, Any], max_bytes: int) -> bytes:
     """The whole body, of known length or chunked; refused as soon as it is known to be too large."""
-    if request.content_length is not None:
-        if request.content_length > max_bytes:
+    stream = environ["wsgi.input"]
+    length = environ.get("CONTENT_LENGTH") or ""
+    if length.isdecimal():
+        if len(length) > 18 or int(length) > max_bytes:
             raise _too_large(max_bytes)
-        return request.get_data(cache=False)
+        whole: bytes = stream.read(int(length))
+        return whole
+    if not environ.get("wsgi.input_terminated"):
+        return b""  # neither a length nor an end: no body
     parts, size = [], 0
-    stream = request.environ["wsgi.input"] if request.environ.get("wsgi.input_terminated") else None
-    while stream is not None and (part := stream.read(BLOCK)):
+    while part := stream.read(BLOCK):
         size += len(part)
         if size > max_bytes:
             raise _too_large(max_bytes)

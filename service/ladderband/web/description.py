@@ -144,6 +144,8 @@ def _add_problem(spec: APISpec) -> None:
             },
             "estimate_s": {"type": ["number", "null"]},
             "limit_s": NUMBER,
+            "numbers": {"type": "integer"},
+            "limit_numbers": {"type": "integer"},
             "limit_bytes": {"type": "integer"},
             "requested": {"type": "string"},
             "reached": {"type": "string"},

@@ -13,7 +13,7 @@ from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.warm import warm
 from ladderband.settings import load_settings
 from ladderband.usecases.limits import Limits
-from ladderband.web.problems import members_of
+from ladderband.web.problems import document_of
 from ladderband.web.resource import Resource
 from ladderband.web.resources import RESOURCES
 
@@ -54,7 +54,7 @@ def refusals() -> Iterator[None]:
     try:
         yield
     except Exception as error:
-        problem = members_of(error)
+        problem = document_of(error)
         if problem is None:
             raise
         raise Refused(problem) from error

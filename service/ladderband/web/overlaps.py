@@ -5,12 +5,16 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Any
 
+import numpy as np
+from marshmallow import ValidationError
+
 from ladderband.formats.csv import csv_body, csv_head
 from ladderband.formats.look import png, svg
 from ladderband.formats.ndjson import ndjson_body
 from ladderband.formats.npy import npy_body
 from ladderband.formats.plots import overlap_plot
 from ladderband.formats.sheet import Sheet
+from ladderband.schemas.fields import Complaint
 from ladderband.schemas.overlaps import OverlapsRequest, OverlapsResponse, overlaps_members
 from ladderband.usecases.overlaps import (
     OverlapsAnswer,
@@ -69,8 +73,14 @@ def _ndjson(sheet: Sheet, question: OverlapsQuestion, answer: OverlapsAnswer) ->
 
 
 def _npy(sheet: Sheet, question: OverlapsQuestion, answer: OverlapsAnswer) -> Iterator[bytes]:
-    name = sheet.array or ARRAYS[0]
-    array = getattr(answer, name)
+    array = (
+        getattr(answer, sheet.array or ARRAYS[0], None) if sheet.array in ("", *ARRAYS) else None
+    )
+    if not isinstance(array, np.ndarray):
+        there = [name for name in ARRAYS if isinstance(getattr(answer, name), np.ndarray)]
+        allowed = "one of: " + ", ".join(there) if there else "none: more than 15 digits are text"
+        detail = "The answer has no such float64 array."
+        raise ValidationError({"array": [Complaint(detail, allowed)]})
     return npy_body(array if question.pairs.batch else array[0])
 
 

@@ -32,7 +32,7 @@ from ladderband.jobs.errors import (
 )
 from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.schemas.base import complaints
-from ladderband.usecases.limits import CostLimitExceeded
+from ladderband.usecases.limits import AnswerTooLarge, CostLimitExceeded
 from ladderband.usecases.mode_maps import ModesNeedAChoice
 
 MEDIA_TYPE = "application/problem+json"
@@ -168,6 +168,11 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "The work was estimated before any of it began, and is above the limit of one request.",
         lambda error: {"estimate_s": _finite(error.estimate_s), "limit_s": error.limit_s},
     ),
+    AnswerTooLarge: Problem(
+        "answer-too-large", 422, "The answer would be too large",
+        "The tables asked for hold more numbers than one answer may.",
+        lambda error: {"numbers": error.numbers, "limit_numbers": error.limit},
+    ),
     DeadlineExceeded: Problem(
         "deadline", 503, "The calculation was stopped at its time limit",
         "The work took longer than it was estimated to. Nothing was kept.",
@@ -229,11 +234,18 @@ HTTP_PROBLEMS: dict[int, Problem] = {
         "method-not-allowed", 405, "This method is not offered here", "Allow lists those offered."
     ),
     413: PROBLEMS[BodyTooLarge],
+    414: Problem(
+        "address-too-long", 414, "The address is too long",
+        "The request line has more than 8190 bytes. Send the question as the body of a POST.",
+    ),
     415: PROBLEMS[UnsupportedMediaType],
     416: Problem(
         "range-not-satisfiable", 416, "The result has no such bytes", "Content-Range has its length."
     ),
     429: Problem("too-many-requests", 429, "Too many requests", "Wait as Retry-After says."),
+    431: Problem(
+        "headers-too-large", 431, "The header fields are too large", "Send fewer or shorter."
+    ),
     500: Problem(
         "internal", 500, "The service failed",
         "A fault of the service. Report the instance id; the log holds the rest.",
@@ -262,12 +274,23 @@ def all_problems() -> Iterator[Problem]:
     yield from sorted(unique.values(), key=lambda problem: (problem.status, problem.slug))
 
 
+def members_of(problem: Problem, detail: str | None, instance: str) -> dict[str, Any]:
+    """The members every problem document has."""
+    return {
+        "type": f"/problems/{problem.slug}",
+        "title": problem.title,
+        "status": problem.status,
+        "detail": detail or problem.meaning,
+        "instance": instance,
+    }
+
+
 def document(
     problem: Problem, detail: str | None, extras: Mapping[str, Any] | None = None
 ) -> Response:
     """The problem document as a response."""
     g.problem = problem.slug
-    return response_of(_members(problem, detail, extras))
+    return response_of(_document_members(problem, detail, extras))
 
 
 def response_of(members: Mapping[str, Any]) -> Response:
@@ -281,23 +304,18 @@ def response_of(members: Mapping[str, Any]) -> Response:
     return response
 
 
-def members_of(error: Exception) -> dict[str, Any] | None:
+def document_of(error: Exception) -> dict[str, Any] | None:
     """The problem document of an error that has a row here; None for any other."""
     problem = next((PROBLEMS[kind] for kind in type(error).__mro__ if kind in PROBLEMS), None)
-    return None if problem is None else _members(problem, str(error), problem.extras(error))
+    if problem is None:
+        return None
+    return _document_members(problem, str(error), problem.extras(error))
 
 
-def _members(
+def _document_members(
     problem: Problem, detail: str | None, extras: Mapping[str, Any] | None
 ) -> dict[str, Any]:
-    return {
-        "type": f"/problems/{problem.slug}",
-        "title": problem.title,
-        "status": problem.status,
-        "detail": detail or problem.meaning,
-        "instance": f"urn:uuid:{uuid.uuid4()}",
-        **(extras or {}),
-    }
+    return {**members_of(problem, detail, f"urn:uuid:{uuid.uuid4()}"), **(extras or {})}
 
 
 def _finite(value: float) -> float | None:
@@ -305,7 +323,7 @@ def _finite(value: float) -> float | None:
 
 
 def _known(error: Exception) -> Response:
-    members = members_of(error)
+    members = document_of(error)
     assert members is not None
     g.problem = members["type"].removeprefix("/problems/")
     return response_of(members)

@@ -25,7 +25,7 @@ from typing import Any, Generic, TypeVar
 from flask import Blueprint, Response, current_app, g, request
 
 from ladderband import __version__
-from ladderband.formats.json_stream import json_chunks
+from ladderband.formats.json_stream import json_chunks, require_finite
 from ladderband.formats.sheet import Sheet
 from ladderband.formats.stored import load_answer
 from ladderband.jobs.submissions import JobView
@@ -83,7 +83,7 @@ class Resource(Generic[Q, A]):
     def from_body(self) -> Response:
         """Answer a POST."""
         settings: Settings = current_app.config["SETTINGS"]
-        body = read_json(request, settings.max_body_bytes, settings.max_json_depth)
+        body = read_json(request.environ, settings.max_body_bytes, settings.max_json_depth)
         return self.answer(body, _view())
 
     def from_query(self) -> Response:
@@ -99,7 +99,7 @@ class Resource(Generic[Q, A]):
         name = chosen_format(request, self.offered, view.get("format"))
         digest = g.digest = self.digest(loaded.question)
         tag = tag_of(digest, name, view)
-        if tag in request.if_none_match:
+        if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
             return _not_modified(tag)
         found = self._answered(body, loaded.question, digest)
         if isinstance(found, JobView):
@@ -130,6 +130,7 @@ class Resource(Generic[Q, A]):
         digest = self.digest(loaded.question)
         if name == "json":
             return json_chunks(self.json_members(loaded, answer, digest))
+        require_finite("answer", answer)
         warnings = [*loaded.warnings, *getattr(answer, "warnings", ())]
         sheet = Sheet.of(self.summary, digest, warnings, view)
         return self.formats[name](sheet, loaded.question, answer)

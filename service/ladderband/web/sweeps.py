@@ -37,7 +37,9 @@ def sweep() -> Response:
     """Check a sweep, put it on record, answer with the job."""
     settings: Settings = current_app.config["SETTINGS"]
     counter = desk()
-    body = read_json(request, settings.max_body_bytes, settings.max_json_depth + EXTRA_DEPTH)
+    body = read_json(
+        request.environ, settings.max_body_bytes, settings.max_json_depth + EXTRA_DEPTH
+    )
     document = REQUEST.read(body)
     plan = parse_plan(document, settings.sweep_points)
     point_s = _estimated(plan, settings.job_work_s)
