@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from types import SimpleNamespace
+
 import pytest
 import schemathesis
 from hypothesis import HealthCheck, Phase, settings
 from marshmallow import ValidationError
 from schemathesis.checks import CHECKS
 
+from ladderband.web import sweeps
 from ladderband.web.description import description
 from ladderband.web.resource import VIEW
 from ladderband.web.resources import RESOURCES
@@ -17,6 +20,7 @@ CASES = 60
 # documents of an outside standard, of which only the members we need are described
 LOOSE = ("#/initial/qcschema/", "#/final/qcschema/")
 BY_PATH = {resource.path: resource for resource in RESOURCES}
+BY_PATH[sweeps.PATH] = SimpleNamespace(request=sweeps.REQUEST)
 
 
 def wrong_only_together(case, response) -> bool:

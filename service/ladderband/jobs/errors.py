@@ -48,9 +48,9 @@ class ResultGone(JobError):
 class TokenMismatch(JobError):
     """An Idempotency-Key came a second time with another request."""
 
-    def __init__(self, token: str) -> None:
+    def __init__(self) -> None:
         super().__init__(
-            f"The Idempotency-Key {token!r} was used before for a different request. "
+            "This Idempotency-Key was used before for a different request. "
             "Use a new one for a new request."
         )
 

@@ -37,8 +37,8 @@ from ladderband.jobs.records import (
 class NewJob:
     """A validated request to be put on record.
 
-    ``point_s`` is the estimated time of one point in seconds; ``token`` the client's
-    Idempotency-Key.
+    ``point_s`` is the estimated time of one point in seconds; ``token`` stands for
+    the client's Idempotency-Key.
     """
 
     kind: str
@@ -144,7 +144,7 @@ def _by_token(connection: Connection, new: NewJob) -> str | None:
         sa.select(token).where(token.c.key_id == new.key_id, token.c.token == new.token)
     ).one_or_none()
     if row is not None and row.digest != new.digest:
-        raise TokenMismatch(new.token)
+        raise TokenMismatch
     return None if row is None else str(row.job_id)
 
 

@@ -18,7 +18,7 @@ _KEY_HEADER = {
     "name": "Idempotency-Key",
     "in": "header",
     "required": False,
-    "schema": {"type": "string", "maxLength": 255},
+    "schema": _TEXT,
     "description": "A repeat with the same key and request finds the job of the first.",
 }
 _PREFER_HEADER = {
