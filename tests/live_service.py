@@ -37,7 +37,7 @@ def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
     """``ladderband serve`` on a free port with further options."""
     command = [sys.executable, "-m", "ladderband", "serve", "--port", "0"]
     command += ["--data-dir", str(data_dir), "--no-log-requests", *options]
-    errors = tempfile.TemporaryFile()
+    errors = tempfile.TemporaryFile()  # noqa: SIM115 - closed at the end
     process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=errors)
     assert process.stdout is not None
     # a watchdog instead of a timed read: a cold kernel cache may take a minute

@@ -77,6 +77,16 @@ def test_several_bands(client):
     assert len(answer["positions"]) == 2
 
 
+def test_labels_ride_along(client):
+    answer = client.post("/v1/bands", json=changed(label_lines=3)).get_json()
+    (labels,) = answer["lines"]
+    assert len(labels["assignment"]) == 3
+    assert labels["assignment"][0] == "0^0_0"
+    assert labels["position_cm1"][0] == 20000.0
+    assert labels["completeness"]["missing_at_most"] < 1.0
+    assert "lines" not in client.post("/v1/bands", json=BODY).get_json()
+
+
 def test_npy_and_csv_hold_the_json_numbers(client):
     answer = client.post("/v1/bands", json=BODY).get_json()
     array = np.load(io.BytesIO(client.post("/v1/bands?format=npy", json=BODY).data))

@@ -293,6 +293,19 @@ def test_text_digits_have_no_npy(client):
     problem_of(response, 422, "validation")
 
 
+def test_quanta_that_hold_no_intensity_give_an_empty_list(client):
+    """Found by generated cases: S = 1938 and 19 quanta, every factor below double range."""
+    mode = {"wavenumber_initial_cm1": 992, "wavenumber_final_cm1": 923, "displacement": 62.25}
+    response = client.post("/v1/progressions", json={"modes": [mode], "v_final_max": 19})
+    assert response.status_code == 200
+    assert response.json["completeness"]["missing_at_most"] >= 1.0
+    for name in ("csv", "ndjson", "npy", "svg", "png"):
+        drawn = client.post(
+            f"/v1/progressions?format={name}", json={"modes": [mode], "v_final_max": 19}
+        )
+        assert drawn.status_code == 200
+
+
 # --- errors from within ---
 
 

@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 from band_oracles import exact_chi, rotation
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.axis import Axis
-from ladderband.numerics.correlation import coupled_modes, correlation_function, exact_step
+from ladderband.numerics.correlation import correlation_function, coupled_modes, exact_step
 from ladderband.numerics.energy_tails import energy_range
 from ladderband.numerics.line_shape import kink_correction
 from ladderband.numerics.moments import line_moments

@@ -11,6 +11,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy.special import voigt_profile
 
 from band_oracles import broadened, histogram, joined, rotation
 from ladderband.numerics.accuracy import Deadline
@@ -135,3 +136,25 @@ def test_list_itself_is_sound():
 
     mean = float(weights @ (np.arange(len(weights)) - zero)) / total
     assert mean == pytest.approx(line_moments(transition).mean, rel=1e-6)
+
+
+@pytest.mark.parametrize("temperature", TEMPERATURES)
+@pytest.mark.parametrize("slopes", [False, True], ids=["constant-moment", "linear-moment"])
+@pytest.mark.parametrize("n", [2, 3, 4])
+def test_band_equals_the_services_own_line_list(n, temperature, slopes):
+    """The other route of the service, with its own proven completeness and bound."""
+    from ladderband.usecases.lines import LinesQuestion, lines
+
+    transition = block(60 + n, n, temperature, mixed=True, slopes=slopes)
+    question = LinesQuestion(transition, tolerance=1e-3, max_lines=1_000_000)
+    found = lines(question, Limits(work_s=2.0), Deadline.none()).lines
+    shape = SHAPES["gaussian"]
+    energies = np.linspace(-4000.0, 12000.0, 641)
+    band = density(transition, energies, shape)
+    broadening = shape.at(temperature, 1.0)
+    profile = voigt_profile(energies[:, None] - found.position_cm1, broadening.sigma, 0.0)
+    expected = profile @ found.intensity
+    missing = found.completeness.missing_at_most * broadening.peak
+    wrong = np.max(found.accuracy.bound) * profile.sum(axis=1).max()
+    error = np.abs(band.intensity - expected).max()
+    assert error <= band.accuracy.bound + missing + wrong + 1e-12 * expected.max()

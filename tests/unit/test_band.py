@@ -8,8 +8,8 @@ from scipy import special
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.band import (
-    _interpolate,
     density,
+    interpolated,
     plan_sampling,
     reference_density,
 )
@@ -101,11 +101,11 @@ def test_interpolation_error_is_that_of_the_proof(frequency):
     if frequency == int(frequency):
         place = np.random.default_rng(1).uniform(0.0, 3.0 * length, 2000)
         exact = np.cos(2.0 * np.pi * frequency * place / length + 0.4)
-        value, lebesgue = _interpolate(grid, place)
+        value, lebesgue = interpolated(grid, place)
     else:  # not periodic: stay inside
         place = np.random.default_rng(1).uniform(8.0, 240.0, 2000)
         exact = np.cos(2.0 * np.pi * frequency * place / length + 0.4)
-        value, lebesgue = _interpolate(grid, place)
+        value, lebesgue = interpolated(grid, place)
     a = 2.0 * np.pi * frequency / length
     double_factorial = 15 * 13 * 11 * 9 * 7 * 5 * 3
     limit = a**16 * (double_factorial / 256.0) ** 2 / float(special.factorial(16))
@@ -114,4 +114,4 @@ def test_interpolation_error_is_that_of_the_proof(frequency):
 
 
 def test_no_points_is_no_work():
-    assert len(_interpolate(np.ones(8), np.empty(0))[0]) == 0
+    assert len(interpolated(np.ones(8), np.empty(0))[0]) == 0

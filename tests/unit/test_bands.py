@@ -181,6 +181,20 @@ def test_deadline_stops_the_work():
         bands(BandsQuestion((Species(LINE),), AXIS, SHAPE), Limits(), Deadline.after(-1.0))
 
 
+def test_labels_are_the_strongest_lines_on_the_axis():
+    from ladderband.usecases.lines import LinesQuestion, lines
+
+    band = ask(label_lines=5, axis=Axis("eV", np.linspace(2.4, 2.7, 50))).bands[0]
+    (found,) = band.lines
+    low, high = 2.4 * 8065.54394, 2.7 * 8065.54394
+    every = lines(LinesQuestion(LINE, tolerance=1e-8), Limits(), Deadline.none()).lines
+    inside = (every.position_cm1 >= low) & (every.position_cm1 <= high)
+    inside &= every.intensity >= 0.01 * every.intensity.max()
+    assert inside.sum() >= 3
+    assert found.position_cm1.tolist() == pytest.approx(every.position_cm1[inside][:5].tolist())
+    assert ask().bands[0].lines == ()
+
+
 # --- what is kept ---
 
 

@@ -45,3 +45,9 @@ def test_a_tolerance_no_float64_can_hold_is_refused() -> None:
 def test_the_deadline_is_seen() -> None:
     with pytest.raises(DeadlineExceeded):
         certified_tables(one_pair(1.0, 1.0, 9.0), 50, 50, 1e-10, Deadline(at=0.0))
+
+
+def test_a_table_too_large_for_balls_says_what_was_reached() -> None:
+    pair = one_pair(1000.0, 1000.0, 3.0, "shift_angstrom_sqrt_u")
+    with pytest.raises(PrecisionNotReached, match="best proven bound"):
+        certified_tables(pair, 600, 600, 1e-13, FOREVER)

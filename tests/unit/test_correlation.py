@@ -73,6 +73,30 @@ def test_bound_holds_in_extremes():
         assert error <= found.bound[index]
 
 
+@pytest.mark.parametrize("temperature", [0.0, 77.0, 300.0, 600.0])
+@pytest.mark.parametrize("seed", range(4))
+def test_inverse_is_bounded_as_proved(temperature, seed):
+    """|X^-1| <= 2 / (1 - alpha) for every t and every leading block, cosines near zero included."""
+    from ladderband.numerics.mixed_modes import contraction
+
+    case = transition(6, temperature, seed=seed, mixed=True, spread=0.6, size=1.0)
+    (block,) = coupled_modes(case).mixed
+    kappa = 2.0 / (1.0 - contraction(block))
+    rng = np.random.default_rng(seed)
+    largest = 0.0
+    for _ in range(300):
+        q = np.exp(-block.exponents + 2j * np.pi * rng.uniform(size=6))
+        phi = np.where(rng.uniform(size=6) < 0.3, 0.5 * np.pi, 2.0 * np.pi * rng.uniform(size=6))
+        tau, c, s = (1.0 - q) / (1.0 + q), np.cos(phi) + 0j, np.sin(phi)
+        for form, scale in ((block.g * tau, block.f**-0.5), (tau / block.g, block.f**0.5)):
+            left = scale[:, None] * block.mixing
+            x = np.sqrt(c)[:, None] * ((left * form) @ left.T) * np.sqrt(c) + 1j * np.diag(s)
+            for size in (1, 3, 6):
+                norm = np.linalg.norm(np.linalg.inv(x[:size, :size]), 2)
+                largest = max(largest, norm / kappa)
+    assert 0.05 < largest <= 1.0
+
+
 def test_branch_of_twenty_modes_is_followed():
     """The root of the determinant turns many times; the value itself is smooth from step to step."""
     case = transition(20, 600.0, seed=3, mixed=True, spread=0.6, low=300.0)

@@ -89,7 +89,7 @@ def test_exact_input_is_taken_exactly() -> None:
 
 
 def test_coefficients_are_within_their_promise() -> None:
-    """12 units of 2^-53 for each coefficient, close frequencies included."""
+    """16 units of 2^-53 for each coefficient, close frequencies included."""
     rng = np.random.default_rng(5)
     for _ in range(200):
         g = rng.uniform(50, 4000)
@@ -98,11 +98,11 @@ def test_coefficients_are_within_their_promise() -> None:
         k = pair_coefficients(one_pair(g, f, delta))
         exact_g, exact_f = Fraction(g), Fraction(f)
         w_yy = (exact_g - exact_f) / (exact_g + exact_f)
-        assert abs(Fraction(k.w_yy[0]) - w_yy) <= 12 * abs(w_yy) / 2**53
+        assert abs(Fraction(k.w_yy[0]) - w_yy) <= 16 * abs(w_yy) / 2**53
         squared = 2 * Fraction(delta) ** 2 / (1 + exact_f / exact_g) ** 2
-        assert abs(Fraction(k.w_z[0]) ** 2 - squared) <= 25 * squared / 2**53
+        assert abs(Fraction(k.w_z[0]) ** 2 - squared) <= 33 * squared / 2**53
         w_yz2 = 4 * exact_g * exact_f / (exact_g + exact_f) ** 2
-        assert abs(Fraction(k.w_yz[0]) ** 2 - w_yz2) <= 25 * w_yz2 / 2**53
+        assert abs(Fraction(k.w_yz[0]) ** 2 - w_yz2) <= 33 * w_yz2 / 2**53
 
 
 @pytest.mark.parametrize("squared_w", [0.0, 2.0, 12.0])

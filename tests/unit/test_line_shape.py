@@ -82,6 +82,12 @@ def test_brownian_wing_is_below_its_cubic_bound(name):
     assert ALL["gaussian"].cubic_tail == 0.0
 
 
+def test_mass_bounds_the_brownian_profile():
+    for name in ("brownian-fast", "brownian-slow", "brownian-voigt"):
+        assert 1.0 <= ALL[name].mass < 20.0
+    assert ALL["voigt"].mass == 1.0
+
+
 @pytest.mark.parametrize("left", [0.01, 1e-6, 1e-12])
 def test_reach_holds_all_but_the_share(left):
     found = shape(40.0)

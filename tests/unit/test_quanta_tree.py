@@ -7,6 +7,7 @@ import itertools
 import numpy as np
 import pytest
 
+from ladderband.numerics import quanta_tree
 from ladderband.numerics.certified_generator import certified_thermal_generator
 from ladderband.numerics.quanta_tree import (
     COST_UNIT,
@@ -40,8 +41,7 @@ def tree_of(
 ) -> QuantaTree:
     nodes = count_nodes(cost, budget, 10**7)
     constant, linear = NONE
-    parts = grow_tree(M, w, start, 1e-16, cost, budget, nodes, constant, linear)
-    return QuantaTree(*parts)
+    return grow_tree(M, w, start, 1e-16, cost, budget, nodes, constant, linear)
 
 
 @pytest.mark.parametrize("seed", range(6))
@@ -89,7 +89,7 @@ def test_the_running_bound_covers_the_true_error(n: int, total: float, budget: f
     nodes = count_nodes(cost, budget, 10**6)
     constant, linear = NONE
     start = np.exp(generator.log_c)
-    tree = QuantaTree(*grow_tree(M, w, start, 1e-13, cost, budget, nodes, constant, linear))
+    tree = grow_tree(M, w, start, 1e-13, cost, budget, nodes, constant, linear)
     quanta = list(map(tuple, quanta_of(tree, np.arange(nodes), n).tolist()))
     truth = multiprecision_amplitudes(transition, quanta)
     errors = np.array(
@@ -97,3 +97,20 @@ def test_the_running_bound_covers_the_true_error(n: int, total: float, budget: f
     )
     assert np.all(errors <= tree.error)
     assert tree.error.max() < 1e-9
+
+
+def test_shared_shells_give_the_same_tree(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Two threads a shell against one: bit for bit."""
+    rng = np.random.default_rng(9)
+    M = rng.normal(size=(6, 6)) * 0.2
+    M = M + M.T
+    cost = costs(rng, 6, 7)
+    alone = tree_of(M, rng.normal(size=6), 1.0, cost, 6.0)
+    rng = np.random.default_rng(9)
+    rng.normal(size=(6, 6))
+    costs(rng, 6, 7)
+    monkeypatch.setattr(quanta_tree, "THREADED_FROM", 2)
+    shared = tree_of(M, rng.normal(size=6), 1.0, cost, 6.0)
+    assert len(alone.amplitude) > 500
+    for one, two in zip(vars(alone).values(), vars(shared).values(), strict=True):
+        assert np.array_equal(one, two)

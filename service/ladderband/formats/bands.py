@@ -6,13 +6,16 @@ from collections.abc import Iterator
 from typing import Any
 
 import numpy as np
+from matplotlib.axes import Axes
 from matplotlib.colors import LinearSegmentedColormap
 from matplotlib.figure import Figure
 
 from ladderband.formats.csv import csv_body, csv_columns, csv_head
 from ladderband.formats.look import Draw, Look, axes
 from ladderband.formats.npy import npy_body
+from ladderband.formats.plots import labelled, quanta_text
 from ladderband.formats.sheet import Sheet
+from ladderband.numerics.axis import in_unit
 from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion
 
 _AXIS_NAMES = {
@@ -79,10 +82,33 @@ def band_plot(question: BandsQuestion, answer: BandsAnswer) -> Draw:
         ax.set_ylim(0.0, 1.08 * top if top > 0.0 else 1.0)
         ax.set_xlabel(_AXIS_NAMES[answer.axis.unit])
         ax.set_ylabel(_SCALE_NAMES[question.scale].replace("{axis}", _unit(answer.axis.unit)))
+        if answer.bands[0].lines and question.line_shape.bath is None:
+            _label_lines(ax, look, answer)
         if 1 < count <= MAX_NAMED:
             ax.legend(frameon=False, fontsize=8.5, labelcolor=look.ink)
 
     return draw
+
+
+def _label_lines(ax: Axes, look: Look, answer: BandsAnswer) -> None:
+    """Assignments of the first species' strongest lines above the first band."""
+    found, band, unit = answer.bands[0].lines[0], answer.bands[0], answer.axis.unit
+    position = np.array([in_unit(x, unit) for x in found.position_cm1.tolist()])
+    height = np.interp(position, answer.axis.values, band.intensity)
+    if not len(position):
+        return
+    ax.set_ylim(0.0, 1.16 * float(max(b.intensity.max() for b in answer.bands)))
+    for k in labelled(ax, position, height):
+        ax.annotate(
+            quanta_text(found.v_initial[k], found.v_final[k]),
+            (position[k], height[k]),
+            xytext=(0, 4),
+            textcoords="offset points",
+            ha="center",
+            va="bottom",
+            fontsize=9,
+            color=look.ink,
+        )
 
 
 def _unit(unit: str) -> str:

@@ -36,8 +36,8 @@ def stick_plot(question: Any, answer: LineList) -> Draw:
         _frame_sticks(ax, position, height)
         ax.set_xlabel("wavenumber / cm$^{-1}$")
         ax.set_ylabel("relative intensity")
-        for k in _labelled(ax, position, height):
-            text = _quanta(answer.v_initial[order[k]], answer.v_final[order[k]])
+        for k in labelled(ax, position, height):
+            text = quanta_text(answer.v_initial[order[k]], answer.v_final[order[k]])
             ax.annotate(
                 text,
                 (position[k], height[k]),
@@ -65,7 +65,7 @@ def _frame_sticks(ax: Axes, position: Any, height: Any) -> None:
     ax.set_ylim(0.0, 1.14 * float(height.max()))
 
 
-def _labelled(ax: Axes, position: Any, height: Any) -> list[int]:
+def labelled(ax: Axes, position: Any, height: Any) -> list[int]:
     """Strongest first, those whose label has room beside the labels already placed."""
     figure_px = ax.get_figure(root=True).get_size_inches() * PIXELS_PER_INCH  # type: ignore[union-attr]
     (x0, x1), (y0, y1) = ax.get_xlim(), ax.get_ylim()
@@ -85,7 +85,8 @@ def _labelled(ax: Axes, position: Any, height: Any) -> list[int]:
     return placed
 
 
-def _quanta(v_initial: Any, v_final: Any) -> str:
+def quanta_text(v_initial: Any, v_final: Any) -> str:
+    """The assignment of a line as a short formula."""
     parts = [
         f"{k}^{{{n}}}_{{{v}}}"
         for k, (v, n) in enumerate(zip(v_initial.tolist(), v_final.tolist(), strict=True), start=1)

@@ -14,7 +14,7 @@ chi         2/Omega sum |ell_n| bound_n
 transform   8 u log2(M) sqrt(M) |c|_2 (Higham 2002, Theorem 24.2, M the length of the FFT)
 axis        16-point Lagrange interpolation on a grid at least four times finer than needed: the
             error of a wave of phase step a is at most a^16 (15!!/2^8)^2 / 16!, summed over |c_n|
-rounding    of the energies: 8 u |x| times the largest slope, 2/Omega sum |c_n| n h
+rounding    of the energies: 8 u (|x| + origin) times the largest slope, 2/Omega sum |c_n| n h
 """
 
 from __future__ import annotations
@@ -24,6 +24,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
+from numba import njit
 
 from ladderband.numerics.correlation import CorrelationFunction, exact_step
 from ladderband.numerics.energy_tails import EnergyRange
@@ -33,7 +34,13 @@ from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 LAGRANGE = 16
-_NODES = np.arange(LAGRANGE) - (LAGRANGE // 2 - 1)
+_INVERSE = np.array(
+    [
+        (-1.0) ** (LAGRANGE - 1 - j) / (math.factorial(j) * math.factorial(LAGRANGE - 1 - j))
+        for j in range(LAGRANGE)
+    ]
+)
+"""1 / prod_{i != j} (j - i)."""
 _WAVE_ERROR = (2027025.0 / 256.0) ** 2 / math.factorial(LAGRANGE)
 
 STEPS_AN_OCTAVE = 4
@@ -117,7 +124,7 @@ def _alias(
         _, error, largest = kink_correction(shape.gamma / period)
         free = FIT_REACH * period - furthest - light
         beyond = cubic / free**2 if cubic else 0.0
-        return (error + largest * (energies.outside + left + beyond)) / period
+        return shape.mass * (error + largest * (energies.outside + left + beyond)) / period
     gap = period - furthest - light
     largest = 2.0 * shape.peak + 1.0 / period
     images = 2.2 * shape.peak * left
@@ -133,10 +140,12 @@ def density(
     shape: Broadening,
     sampling: Sampling,
     energies: Floats,
+    origin: float = 0.0,
 ) -> Density:
     """Evaluate the band at the given energies (any order).
 
-    ``chi(step, count)`` supplies the correlation function, so that a caller can keep it.
+    ``chi(step, count)`` supplies the correlation function, so that a caller can keep it. ``origin``
+    is the largest number the energies are differences of: its rounding moves them.
     """
     step, count = sampling.step, sampling.count
     correlation = chi(step, count)
@@ -158,13 +167,13 @@ def density(
     inside = (energies >= sampling.low) & (energies <= sampling.high)
     value = np.zeros(len(energies))
     place = energies[inside] * (length / period)
-    value[inside], lebesgue = _interpolate(grid, place)
+    value[inside], lebesgue = interpolated(grid, place)
     amount = weights * np.abs(c) / period
     wave = float(amount @ (2.0 * math.pi * np.arange(count) / length) ** LAGRANGE) * _WAVE_ERROR
     rounding = float((weights * size) @ (correlation.bound + 64.0 * UNIT_ROUNDOFF)) / period
     norm = math.sqrt(2.0 * length) * float(np.linalg.norm(c)) / period
     transform = lebesgue * (8.0 * UNIT_ROUNDOFF * math.log2(length) + 40.0 * UNIT_ROUNDOFF) * norm
-    top = max(abs(sampling.low), abs(sampling.high), period)
+    top = max(abs(sampling.low), abs(sampling.high), period) + abs(origin)
     slope = float(amount @ times) * 8.0 * UNIT_ROUNDOFF * top
     bound = sampling.error + wave + rounding + transform + slope
     if not math.isfinite(bound):
@@ -172,17 +181,30 @@ def density(
     return Density(value, bound * (1.0 + 1e-9), sampling.low, sampling.high)
 
 
-def _interpolate(grid: Floats, place: Floats) -> tuple[Floats, float]:
+def interpolated(grid: Floats, place: Floats) -> tuple[Floats, float]:
     """16-point Lagrange interpolation of a periodic grid; also the largest sum of |weights|."""
-    if not len(place):
-        return np.empty(0), 1.0
-    whole = np.floor(place)
-    offsets = (place - whole)[:, None] - _NODES
-    weights = np.ones((len(place), LAGRANGE))
-    for j in range(LAGRANGE):
-        for i in range(LAGRANGE):
-            if i != j:
-                weights[:, j] *= offsets[:, i] / float(_NODES[j] - _NODES[i])
-    index = (whole.astype(np.int64)[:, None] + _NODES) % len(grid)
-    value: Floats = (grid[index] * weights).sum(axis=1)
-    return value, float(np.abs(weights).sum(axis=1).max())
+    value = np.empty(len(place))
+    return value, float(_lagrange(grid, place, _INVERSE, value))
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _lagrange(grid: Floats, place: Floats, inverse: Floats, value: Floats) -> float:
+    """Weights as products of the distances before and after each node over a constant."""
+    before, after = np.empty(LAGRANGE), np.empty(LAGRANGE)
+    largest = 1.0
+    for p in range(len(place)):
+        whole = math.floor(place[p])
+        first = int(whole) - (LAGRANGE // 2 - 1)
+        distance = place[p] - whole + (LAGRANGE // 2 - 1)
+        before[0], after[LAGRANGE - 1] = 1.0, 1.0
+        for j in range(1, LAGRANGE):
+            before[j] = before[j - 1] * (distance - (j - 1))
+            after[LAGRANGE - 1 - j] = after[LAGRANGE - j] * (distance - (LAGRANGE - j))
+        total, size = 0.0, 0.0
+        for j in range(LAGRANGE):
+            weight = before[j] * after[j] * inverse[j]
+            total += weight * grid[(first + j) % len(grid)]
+            size += abs(weight)
+        value[p] = total
+        largest = max(largest, size)
+    return largest

@@ -37,6 +37,15 @@ class CertifiedTables:
         return "+".join(sorted(set(self.routes)))
 
 
+BALL_ELEMENTS = 200_000
+"""Largest table (elements) that is tried in balls when the grid misses: about 0.5 s."""
+
+
+def grid_reach(v_initial_max: int, v_final_max: int) -> float:
+    """A tolerance the grid is sure to meet, from a fit: below it, expect balls (only for the cost)."""
+    return 1e-12 + 6e-14 * max(v_initial_max, v_final_max)
+
+
 def ladder_is_hopeless(v_initial_max: int, v_final_max: int, tolerance: float) -> bool:
     """Whether the ladder's bound is sure to miss: rho_l >= 24 u l |S_{l-2}| with shells of about 0.3.
 
@@ -58,7 +67,8 @@ def certified_tables(
     Raises
     ------
     PrecisionNotReached
-        The tolerance is below what float64 can hold.
+        The tolerance is below what float64 can hold, or below the grid's bound for a table too large
+        for balls.
     """
     if tolerance < SMALLEST_TOLERANCE:
         raise PrecisionNotReached(
@@ -68,24 +78,38 @@ def certified_tables(
             reached=f"{SMALLEST_TOLERANCE:.2g}",
         )
     coefficients = pair_coefficients(pairs)
-    names = np.full(len(pairs), "ladder", dtype=object)
+    names = ["ladder"] * len(pairs)
     if ladder_is_hopeless(v_initial_max, v_final_max, tolerance):
         tables = np.zeros((len(pairs), v_initial_max + 1, v_final_max + 1))
         bounds = np.full(len(pairs), np.inf)
     else:
         tables, bounds = ladder_tables(coefficients, v_initial_max, v_final_max)
-    # in chunks, so that the deadline is seen; one pair is at most some 0.5 s
     missed = np.flatnonzero(bounds > tolerance)
-    for chunk in np.array_split(missed, max(1, len(missed) // 64)):
+    for begin in range(0, len(missed), 64):  # the deadline is seen between chunks
         deadline.check()
-        grid_tables(coefficients, chunk, tables, bounds, tolerance)
-        names[chunk] = "grid"
-    for index in np.flatnonzero(bounds > tolerance):
-        tables[index], bounds[index] = _rounded_balls(
-            ExactPair.of(pairs, int(index)), v_initial_max, v_final_max, tolerance, deadline
-        )
-        names[index] = "balls"
+        grid_tables(coefficients, missed[begin : begin + 64], tables, bounds, tolerance)
+    for index in missed.tolist():
+        names[index] = "grid"
+        if bounds[index] > tolerance:
+            deadline.check()
+            _admit_balls(tables[index].size, float(bounds[index]), tolerance)
+            pair = ExactPair.of(pairs, index)
+            tables[index], bounds[index] = _rounded_balls(
+                pair, v_initial_max, v_final_max, tolerance, deadline
+            )
+            names[index] = "balls"
     return CertifiedTables(tables, bounds, tuple(names))
+
+
+def _admit_balls(elements: int, bound: float, tolerance: float) -> None:
+    if elements > BALL_ELEMENTS:
+        raise PrecisionNotReached(
+            f"The best proven bound of this table in float64 is {bound:.2g}, above the tolerance "
+            f"{tolerance:.2g}, and it is too large for exact arithmetic. Raise the tolerance or ask "
+            "for fewer quanta.",
+            requested=f"{tolerance:.2g}",
+            reached=f"{bound:.2g}",
+        )
 
 
 def _rounded_balls(

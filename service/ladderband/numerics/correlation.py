@@ -15,13 +15,14 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.sparse import coo_array
-from scipy.sparse.csgraph import connected_components
+from numpy.typing import NDArray
 
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.mixed_modes import BlockValues, Complexes, ModeBlock, block_values
+from ladderband.numerics.mixed_modes import BlockValues, ModeBlock, block_values
+from ladderband.numerics.mode_blocks import BlockIndices, mode_blocks
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.tangent_kernel import Complexes
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.uncoupled_modes import UncoupledModes, uncoupled_values
 from ladderband.numerics.units import boltzmann_exponent
@@ -98,13 +99,8 @@ def coupled_modes(transition: Transition) -> CoupledModes:
     total = float(constant @ constant + 0.5 * ((slopes**2).sum(axis=1) / g) @ hot)
     if total == 0.0:
         raise DomainError("The transition moment is zero: give a constant or a slope.", "/moment")
-    blocks = _blocks(transition.mixing)
-    if transition.mixing is None:
-        alone = (np.arange(len(g)), np.arange(len(g)), np.ones(len(g)))
-    else:
-        rows = np.array([rows[0] for rows, _ in blocks if len(rows) == 1], dtype=int)
-        columns = np.array([columns[0] for rows, columns in blocks if len(rows) == 1], dtype=int)
-        alone = (rows, columns, np.sign(transition.mixing[rows, columns]))
+    blocks = mode_blocks(transition.mixing, len(g))
+    alone = _single_modes(transition, blocks)
     displacements = transition.displacements
     uncoupled = None
     if len(alone[0]):
@@ -125,24 +121,21 @@ def coupled_modes(transition: Transition) -> CoupledModes:
             exponents[columns],
             slopes[columns],
         )
-        for rows, columns in blocks
-        if len(rows) > 1
+        for rows, columns in ((list(b.final), list(b.initial)) for b in blocks if len(b.final) > 1)
     )
     return CoupledModes(uncoupled, mixed, constant, total)
 
 
-def _blocks(mixing: Floats | None) -> list[tuple[list[int], list[int]]]:
-    """Final and initial modes of each connected block of J (exact zeros do not connect)."""
-    if mixing is None:
-        return []
-    n = len(mixing)
-    rows, columns = np.nonzero(mixing)
-    graph = coo_array((np.ones(len(rows)), (rows, columns + n)), shape=(2 * n, 2 * n))
-    count, labels = connected_components(graph, directed=False)
-    members: list[tuple[list[int], list[int]]] = [([], []) for _ in range(count)]
-    for index, label in enumerate(labels.tolist()):
-        members[label][index >= n].append(index % n)
-    return members
+def _single_modes(
+    transition: Transition, blocks: list[BlockIndices]
+) -> tuple[NDArray[np.int64], NDArray[np.int64], Floats]:
+    """(final mode, initial mode, sign of J) of the modes that mix with none."""
+    pairs = [(block.final[0], block.initial[0]) for block in blocks if len(block.final) == 1]
+    final = np.array([pair[0] for pair in pairs], dtype=np.int64)
+    initial = np.array([pair[1] for pair in pairs], dtype=np.int64)
+    if transition.mixing is None:
+        return final, initial, np.ones(len(pairs))
+    return final, initial, np.sign(transition.mixing[final, initial])
 
 
 def correlation_function(

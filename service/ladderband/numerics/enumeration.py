@@ -14,7 +14,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -251,7 +251,7 @@ def _raised(prediction: Prediction, budget: float, excess: float) -> float:
 def _tree(problem: CoupledProblem, ladder: _Ladder, budget: float, nodes: int) -> QuantaTree:
     # c: its logarithm, at most 600, was rounded, and exp rounds: 600 u + 4 u, and the entry's own
     start_error = 2.0 * ENTRY_ERROR + 604.0 * UNIT_ROUNDOFF
-    amplitude, error, parent, last, moment, moment_error = grow_tree(
+    tree = grow_tree(
         ladder.M,
         ladder.w,
         ladder.start,
@@ -263,8 +263,7 @@ def _tree(problem: CoupledProblem, ladder: _Ladder, budget: float, nodes: int) -
         ladder.linear,
     )
     # entries of M known to 1e-25 absolute only, in sums of at most 1e5 terms below 1
-    error += 1e-20
-    return QuantaTree(amplitude, error, parent, last, moment, moment_error)
+    return replace(tree, error=tree.error + 1e-20)
 
 
 def _lines(problem: CoupledProblem, tree: QuantaTree) -> BlockLines:

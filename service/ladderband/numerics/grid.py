@@ -78,7 +78,7 @@ def _pointwise(xi, s, delta, delta_error, v_max, weight, error):  # type: ignore
     """Add what the rounding of xi does to the initial functions: |phi'| <= sqrt(2 v + 2) pi^-1/4."""
     slope = weight * PEAK * np.sqrt(2.0 * v_max + 2.0)
     for j in range(len(xi)):
-        moved = 4.0 * UNIT_ROUNDOFF * abs(xi[j]) + delta_error * abs(delta) * s
+        moved = 5.0 * UNIT_ROUNDOFF * abs(xi[j]) + delta_error * abs(delta) * s
         error[j] += slope * moved
 
 

@@ -18,7 +18,7 @@ u = 2^-53, Q = |w|^2 / 8 and any lambda in (0, 1),
    \quad \mu = 1 + Q,\ \mu' = 1 + Q\,\frac{1+\lambda}{1-\lambda},
 
 .. math::
-   \rho_l = 24u\,(|w|\sqrt l\,\|\hat S_{l-1}\| + (|W_{yy}|+|W_{yz}|)\,l\,\|\hat S_{l-2}\|),
+   \rho_l = 28u\,(|w|\sqrt l\,\|\hat S_{l-1}\| + (|W_{yy}|+|W_{yz}|)\,l\,\|\hat S_{l-2}\|),
 
 where ||S_l|| is the Euclidean norm of shell l of the computed table. It is a posteriori and costs one
 multiplication an element. Assumed: IEEE 754 double arithmetic, and an ``exp`` within 4 units of 2^-53.
@@ -36,17 +36,20 @@ from ladderband.numerics.oscillators import OscillatorColumns, exact
 from ladderband.numerics.transition import Floats
 
 UNIT_ROUNDOFF = 2.0**-53
-ROUNDINGS = 24
-"""Roundings on the longest path to an element: 12 in a coefficient, 2 square roots, 3 products, 4
+ROUNDINGS = 28
+"""Roundings on the longest path to an element: 16 in a coefficient, 2 square roots, 3 products, 4
 sums, 2 in the division by v + n; one more covers second order."""
+
+DISPLACEMENT_ROUNDINGS = {"displacement": 1.0, "huang_rhys": 2.0, "shift_angstrom_sqrt_u": 6.0}
+"""Units of 2^-53 by which Delta may be off; see :meth:`OscillatorColumns.displacements`."""
 
 
 @dataclass(frozen=True)
 class PairCoefficients:
-    """W, w, c of B oscillator pairs in float64, each entry within 12 units of 2^-53 (relative).
+    """W, w, c of B oscillator pairs in float64, each entry within 16 units of 2^-53 (relative).
 
     ``c`` is c itself (0 where it underflows) with its own relative error ``c_error``; ``scale`` is
-    sqrt(g/f), within 2 units; ``displacement`` is within ``displacement_error`` (relative). All (B,).
+    sqrt(g/f), within 3 units; ``displacement`` is within ``displacement_error`` (relative). All (B,).
     """
 
     w_yy: Floats
@@ -89,10 +92,10 @@ def pair_coefficients(pairs: OscillatorColumns) -> PairCoefficients:
 
     Notes
     -----
-    Roundings, in units of 2^-53: the three ratios <= 3; t <= 1; sqrt t <= 1.5; the displacement
-    <= 4 (see :class:`OscillatorColumns`); w_z = sqrt2 * Delta * g/(g+f): 1 + 4 + 2 + 2 <= 12, w_y one
-    product and sqrt t more, still <= 12. log of c's Gaussian, Delta^2 g/(g+f)/2: relative error
-    <= 8 + 2 + 2 = 12, which the exponential turns into 12 times its argument.
+    Roundings, in units of 2^-53: the three ratios <= 3; t <= 1, sqrt t <= 1.5; the displacement <= 6
+    (see :class:`OscillatorColumns`); w_z = sqrt2 * Delta * g/(g+f): 1 + 6 + 3 + 2 = 12, w_y a product
+    and sqrt t more: 14.5; w_yz 1.5 + 3 + 1. The exponent Delta^2 g/(g+f)/2: 13 + 3 + 2 = 18, which the
+    exponential turns into 18 times its size.
     """
     difference, share, t = _ratios(pairs)
     delta = pairs.displacements()
@@ -108,10 +111,10 @@ def pair_coefficients(pairs: OscillatorColumns) -> PairCoefficients:
         w_y=-w_z * root_t,
         w_z=w_z,
         c=c,
-        c_error=(12.0 * exponent + 16.0) * UNIT_ROUNDOFF,
+        c_error=(20.0 * exponent + 16.0) * UNIT_ROUNDOFF,
         scale=1.0 / root_t,
         displacement=delta,
-        displacement_error=(4.0 if pairs.shift_kind != "displacement" else 1.0) * UNIT_ROUNDOFF,
+        displacement_error=DISPLACEMENT_ROUNDINGS[pairs.shift_kind] * UNIT_ROUNDOFF,
     )
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -32,6 +32,17 @@ class LineList:
 
     def __len__(self) -> int:
         return len(self.position_cm1)
+
+    def by_position(self) -> LineList:
+        """The same lines, rising position first, stronger before weaker at one position."""
+        order = np.lexsort((-self.intensity, self.position_cm1))
+        return replace(
+            self,
+            position_cm1=self.position_cm1[order],
+            intensity=self.intensity[order],
+            v_initial=self.v_initial[order],
+            v_final=self.v_final[order],
+        )
 
 
 def assignments(v_initial: Quanta, v_final: Quanta) -> list[str]:

@@ -55,6 +55,22 @@ def block_lines(
     return enumerate_block(part, tolerance, limit, deadline)
 
 
+def uncoupled_lines(
+    transition: Transition,
+    sticks: list[ModeSticks],
+    threshold: float,
+    max_lines: int,
+    deadline: Deadline,
+) -> LineList:
+    """Joint lines of uncoupled modes, one list of sticks each: at least ``threshold`` of the strongest."""
+    parts = [_of_sticks(mode) for mode in sticks]
+    cut = threshold * math.prod(float(part.intensity.max()) for part in parts)
+    joint = _products(parts, cut, deadline)
+    blocks = [BlockIndices((k,), (k,)) for k in range(len(sticks))]
+    selection = Selection(max_lines=max_lines)
+    return _selected(transition, blocks, parts, joint, selection, _sum_error(parts))
+
+
 def _of_sticks(sticks: ModeSticks) -> BlockLines:
     """A single mode's table as block lines (the sign of J does not matter: a square follows)."""
     intensity = sticks.weights.ravel()
@@ -104,13 +120,18 @@ def transition_lines(
     share = tolerance / (2.0 * len(blocks)) if len(blocks) > 1 else tolerance
     parts = [block_lines(transition, block, share, limit, deadline) for block in blocks]
     joint = _joint(parts, tolerance, limit, deadline)
-    error = 1.001 * (math.prod(1.0 + part.sum_bound for part in parts) - 1.0) + 1e-15
+    error = _sum_error(parts)
     return EnumeratedLines(
         _selected(transition, blocks, parts, joint, selection, error),
         _completeness(joint.intensity, error),
         len(joint.intensity),
         float(joint.intensity.max()),
     )
+
+
+def _sum_error(parts: list[BlockLines]) -> float:
+    """Sum of |product - true| over all joint lines: prod(1 + e_b) - 1."""
+    return 1.001 * (math.prod(1.0 + part.sum_bound for part in parts) - 1.0) + 1e-15
 
 
 def _completeness(intensity: Floats, error: float) -> Completeness:
@@ -130,10 +151,7 @@ class _Joint:
 
 
 def _joint(parts: list[BlockLines], tolerance: float, limit: int, deadline: Deadline) -> _Joint:
-    if len(parts) == 1:
-        places = np.arange(len(parts[0].intensity), dtype=np.int32)[:, None]
-        return _Joint(parts[0].intensity, parts[0].bound, places)
-    cut = _cut_for(parts, tolerance, limit)
+    cut = _cut_for(parts, tolerance, limit) if len(parts) > 1 else 0.0
     return _products(parts, cut, deadline)
 
 
@@ -170,24 +188,27 @@ def _convolved(a: Floats, b: NDArray[Any]) -> Floats:
 
 def _products(parts: list[BlockLines], cut: float, deadline: Deadline) -> _Joint:
     """All joint lines of at least ``cut``; a partial product that can not reach it is dropped."""
+    if len(parts) == 1:
+        kept = np.flatnonzero((parts[0].intensity >= cut) & (parts[0].intensity > 0.0))
+        place = kept.astype(np.int32)[:, None]
+        return _Joint(parts[0].intensity[kept], parts[0].bound[kept], place)
     peaks = [float(part.intensity.max()) for part in parts]
     intensity, bound = np.ones(1), np.zeros(1)
     places = np.empty((1, 0), np.int32)
     for index, part in enumerate(parts):
         need = cut / math.prod(peaks[index + 1 :])
         useful = np.flatnonzero(part.intensity * float(intensity.max()) >= need)
-        kept = []
+        pairs = []
         for begin in range(0, len(intensity), CHUNK):
             deadline.check()
-            rows = intensity[begin : begin + CHUNK, None]
-            row, column = np.nonzero(rows * part.intensity[useful] >= need)
-            kept.append((row + begin, useful[column]))
-        row = np.concatenate([pair[0] for pair in kept])
-        column = np.concatenate([pair[1] for pair in kept])
-        product = intensity[row] * part.intensity[column]
+            product = intensity[begin : begin + CHUNK, None] * part.intensity[useful]
+            row, column = np.nonzero((product >= need) & (product > 0.0))
+            pairs.append((row + begin, useful[column]))
+        row, column = (np.concatenate(part_of) for part_of in zip(*pairs, strict=True))
+        joint = intensity[row] * part.intensity[column]
         raised = (intensity[row] + bound[row]) * (part.intensity[column] + part.bound[column])
-        bound = (raised - product) * 1.001 + 4.0 * UNIT_ROUNDOFF * product
-        intensity = product
+        bound = (raised - joint) * 1.001 + 4.0 * UNIT_ROUNDOFF * joint
+        intensity = joint
         places = np.column_stack([places[row], column.astype(np.int32)])
     return _Joint(intensity, bound, places)
 
@@ -201,7 +222,7 @@ def _selected(
     error: float,
 ) -> LineList:
     """The strongest lines inside the selection, strongest first."""
-    strong = np.flatnonzero(joint.intensity >= selection.threshold * joint.intensity.max())
+    strong = np.flatnonzero(joint.intensity >= selection.threshold * joint.intensity.max(initial=0.0))
     order = strong[np.argsort(-joint.intensity[strong], kind="stable")]
     chosen, v, n, position = _inside(transition, blocks, parts, joint, order, selection)
     return LineList(
@@ -227,12 +248,14 @@ def _inside(
     selection: Selection,
 ) -> tuple[Places, Quanta, Quanta, Floats]:
     """Walk down the strongest lines until ``max_lines`` of them lie inside the window."""
-    everything = math.isinf(selection.low_cm1) and math.isinf(selection.high_cm1)
-    step = selection.max_lines if everything else CHUNK
+    if math.isinf(selection.low_cm1) and math.isinf(selection.high_cm1):
+        chosen = order[: selection.max_lines]
+        v, n = _quanta(transition, blocks, parts, joint.places[chosen])
+        return chosen, v, n, positions(transition, v, n)
     found: list[tuple[Places, Quanta, Quanta, Floats]] = []
     count = 0
-    for begin in range(0, max(1, len(order)), step):
-        chosen = order[begin : begin + step]
+    for begin in range(0, max(1, len(order)), CHUNK):
+        chosen = order[begin : begin + CHUNK]
         v, n = _quanta(transition, blocks, parts, joint.places[chosen])
         position = positions(transition, v, n)
         keep = (position >= selection.low_cm1) & (position <= selection.high_cm1)

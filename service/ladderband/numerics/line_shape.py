@@ -16,15 +16,15 @@ time exact to a proven bound; the Lorentzian's heavy tails and its kink at t = 0
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
-from functools import lru_cache
+from dataclasses import dataclass, replace
+from functools import cached_property, lru_cache
 
 import numpy as np
 from scipy import special
 
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.mixed_modes import Complexes
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.tangent_kernel import Complexes
 from ladderband.numerics.transition import Floats
 from ladderband.numerics.units import BOLTZMANN_CM1_K
 
@@ -146,25 +146,38 @@ class Broadening:
         """Bound of (1/pi) integral_time^inf |decay| dt."""
         return float(self.size(np.array(time))) / (math.pi * max(self.slope(time), 1e-300))
 
-    @property
+    @cached_property
     def peak(self) -> float:
-        """An upper bound of the profile."""
+        """An upper bound of |profile|."""
         bounds = []
         if self.sigma:
-            bounds.append(1.0 / (self.sigma * math.sqrt(2.0 * math.pi)))
+            bounds.append(self.mass / (self.sigma * math.sqrt(2.0 * math.pi)))
         if self.gamma:
-            bounds.append(1.0 / (math.pi * self.gamma))
+            bounds.append(self.mass / (math.pi * self.gamma))
         if self.rate:
-            grid = np.linspace(0.0, self.end(1e-6), 2001)
-            # a falling function: the left sum is above its integral
-            left = float(self.size(grid[:-1]).sum() * grid[1])
-            bounds.append(left / math.pi + 1e-6)
+            bounds.append(self._integrated())
         return min(bounds) * (1.0 + 1e-12)
+
+    def _integrated(self) -> float:
+        """(1/pi) integral of |decay|; a falling function, so the left sum is above its integral."""
+        grid = np.linspace(0.0, self.end(1e-6), 2001)
+        return float(self.size(grid[:-1]).sum() * grid[1]) / math.pi + 1e-6
+
+    @cached_property
+    def mass(self) -> float:
+        """Integral of |profile|: 1, a little more when a Brownian bath makes negative wings.
+
+        The bath's profile is below its peak p and below C/|u|^3: at most 3 C^(1/3) p^(2/3).
+        """
+        if not self.rate:
+            return 1.0
+        alone = replace(self, sigma=0.0, gamma=0.0)._integrated()
+        return 3.0 * float(np.cbrt(self.cubic_tail * alone**2))
 
     @property
     def kernel_top(self) -> float:
         """The largest value of the sampled kernel: the Lorentzian's own peak, or ``peak``."""
-        return 1.0 / (math.pi * self.gamma) if self.gamma else self.peak
+        return self.mass / (math.pi * self.gamma) if self.gamma else self.peak
 
     def light_reach(self, left: float) -> float:
         """A distance w: of the profile without Lorentzian at most ``left`` lies beyond +-w."""
@@ -173,7 +186,7 @@ class Broadening:
             reach += self.sigma * math.sqrt(2.0 * math.log(2.0 / left))
         return reach
 
-    @property
+    @cached_property
     def cubic_tail(self) -> float:
         r"""C with |profile of the Brownian bath at u| <= C / |u|^3 from its mean, 0 without one.
 

@@ -57,7 +57,12 @@ class OscillatorColumns:
         return len(self.shift)
 
     def displacements(self) -> Floats:
-        """Delta in float64, relative error at most 4 units of 2^-53."""
+        """Delta in float64, relative error at most 6 units of 2^-53.
+
+        Of a shift: pi^2 within 1.7, its constant 1, two products, the wavenumber 1, halved by the root
+        and rounded: 3.9; the shift itself and the last product 2. Of a Huang-Rhys factor: 2. A
+        displacement sent as a number has none, sent as a string 1.
+        """
         shift = rounded(self.shift)
         if self.shift_kind == "displacement":
             return shift

@@ -1,4 +1,4 @@
-"""Stick spectrum of one uncoupled mode, and the product of several, with what is missing proven."""
+"""Stick spectrum of one uncoupled mode, with what is missing proven."""
 
 from __future__ import annotations
 
@@ -7,13 +7,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ladderband.numerics.accuracy import Accuracy, Completeness, Deadline
+from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.certificate import certified_tables
 from ladderband.numerics.hermite import reach
 from ladderband.numerics.ladder import UNIT_ROUNDOFF
-from ladderband.numerics.line_list import LineList, Quanta
 from ladderband.numerics.oscillators import one_pair
-from ladderband.numerics.transition import Floats, Mode, Transition
+from ladderband.numerics.transition import Floats, Mode
 from ladderband.numerics.units import boltzmann_exponent
 
 QUANTA_MAX = 2000
@@ -139,74 +138,4 @@ def _trimmed(sticks: ModeSticks, tolerance: float) -> ModeSticks:
         sticks.sum_bound,
         sticks.missing_at_most + lost * (1.0 + 1e-12),
         sticks.route,
-    )
-
-
-@dataclass(frozen=True)
-class _Product:
-    """Joint lines of the modes combined so far."""
-
-    intensity: Floats
-    v: Quanta
-    n: Quanta
-
-
-def combined_lines(
-    transition: Transition,
-    sticks: list[ModeSticks],
-    threshold: float,
-    max_lines: int,
-    deadline: Deadline,
-) -> LineList:
-    """Lines of all uncoupled modes together, at least ``threshold`` of the strongest.
-
-    A partial product is dropped only when even the strongest sticks of the remaining modes can not
-    lift it to the threshold, so no line above it is lost.
-
-    Notes
-    -----
-    With e_k the sum bound of mode k the sum of |product - true| over all lines is at most
-    prod(1 + e_k) - 1, because every mode's sticks sum to at most 1.
-    """
-    peaks = [float(mode.weights.max()) for mode in sticks]
-    cut = threshold * math.prod(peaks)
-    lines = _Product(np.ones(1), np.empty((1, 0), np.int32), np.empty((1, 0), np.int32))
-    for index, mode in enumerate(sticks):
-        deadline.check()
-        lines = _times(lines, mode.weights, cut / math.prod(peaks[index + 1 :]))
-    return _line_list(transition, sticks, _strongest(lines, max_lines))
-
-
-def _times(lines: _Product, weights: Floats, cut: float) -> _Product:
-    product = lines.intensity[:, None] * weights.ravel()[None, :]
-    keep, stick = np.nonzero((product >= cut) & (product > 0.0))
-    v, n = np.divmod(stick, weights.shape[1])
-    return _Product(
-        product[keep, stick],
-        np.column_stack([lines.v[keep], v.astype(np.int32)]),
-        np.column_stack([lines.n[keep], n.astype(np.int32)]),
-    )
-
-
-def _strongest(lines: _Product, count: int) -> _Product:
-    if len(lines.intensity) <= count:
-        return lines
-    kept = np.argpartition(-lines.intensity, count - 1)[:count]
-    return _Product(lines.intensity[kept], lines.v[kept], lines.n[kept])
-
-
-def _line_list(transition: Transition, sticks: list[ModeSticks], lines: _Product) -> LineList:
-    shift = lines.n @ transition.wavenumbers_final - lines.v @ transition.wavenumbers_initial
-    position = transition.origin_cm1 + transition.direction * shift
-    order = np.lexsort((-lines.intensity, position))
-    captured = math.fsum(lines.intensity)
-    error = math.prod(1.0 + mode.sum_bound for mode in sticks) - 1.0 + 1e-15
-    bound = 1.01 * sum(mode.bound for mode in sticks) + 4.0 * len(sticks) * UNIT_ROUNDOFF
-    return LineList(
-        position_cm1=position[order],
-        intensity=lines.intensity[order],
-        v_initial=lines.v[order],
-        v_final=lines.n[order],
-        completeness=Completeness(captured, 1.0, max(0.0, 1.0 - captured + error)),
-        accuracy=Accuracy(bound, "proven", "+".join(sorted({mode.route for mode in sticks}))),
     )

@@ -25,7 +25,10 @@ small for the sets of a polyatomic band; the result says how large it is.
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 from numba import njit
@@ -37,6 +40,13 @@ from ladderband.numerics.transition import Floats
 COST_UNIT = 2.0**-20
 """Costs and budgets are multiples of this, so every sum of costs is exact in float64 and a set is
 below the budget or not whatever the order of its quanta: smaller sets are never missing."""
+
+
+THREADED_FROM = 8192
+"""Inner nodes of a shell from which two threads pay (a shell of that size takes about 1 ms)."""
+
+Shell = tuple[NDArray[np.int32], Floats, NDArray[np.int64], NDArray[np.int64]]
+"""Nodes of a shell that have children: place, budget left, cuts of the list, lower neighbours."""
 
 
 @dataclass(frozen=True)
@@ -110,217 +120,240 @@ def count_nodes(cost, budget, limit):  # type: ignore[no-untyped-def]
             return total
 
 
-@njit(cache=True, nogil=True)
-def _family(q, span, again, stop, last, first, old, M, w, amplitude, error, scale, step):  # type: ignore[no-untyped-def]
-    """Amplitudes and errors of all children of q; factor[e] = sqrt(q_j) of its lower neighbours.
+# A lower neighbour q - e_j is one number: its place, the index j and the quanta q_j.
+_PLACE, _INDEX, _MASK = 24, 12, 0xFFF
 
-    ``scale`` = 1/sqrt(q_last + 1) for the child that raises the last index; ``step`` = gamma.
-    """
-    a, b = span
-    index, _, place, factor = old
-    begin = last + 1
-    base = first + (1 if again else 0)
+
+@njit(cache=True, nogil=True)
+def _packed(place, index, quanta):  # type: ignore[no-untyped-def]
+    return (np.int64(place) << _PLACE) | (np.int64(index) << _INDEX) | np.int64(quanta)
+
+
+@njit(cache=True, nogil=True)
+def _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound):  # type: ignore[no-untyped-def]
+    """sqrt(q_l + 1) times amplitude and error of the children l = low..stop-1 of q."""
     own = amplitude[q]
     own_error = error[q] + step * abs(own)
-    for up in range(begin, stop):
-        amplitude[base + up - begin] = w[up] * own
-        error[base + up - begin] = abs(w[up]) * own_error
-    value = 0.0
-    bound = 0.0
-    if again:
-        value = w[last] * own
-        bound = abs(w[last]) * own_error
-    for e in range(a, b):
-        other = place[e]
-        size = factor[e] * amplitude[other]
-        size_error = factor[e] * error[other] + step * abs(size)
-        row = index[e]
-        for up in range(begin, stop):
+    for up in range(low, stop):
+        value[up] = w[up] * own
+        bound[up] = abs(w[up]) * own_error
+    for neighbour in neighbours:
+        place = neighbour >> _PLACE
+        row = (neighbour >> _INDEX) & _MASK
+        factor = root[neighbour & _MASK]
+        size = factor * amplitude[place]
+        size_error = factor * error[place] + step * abs(size)
+        for up in range(low, stop):
             coefficient = M[row, up]
-            amplitude[base + up - begin] += coefficient * size
-            error[base + up - begin] += abs(coefficient) * size_error
-        if again:
-            value += M[row, last] * size
-            bound += abs(M[row, last]) * size_error
-    if again:
-        amplitude[first] = value * scale
-        error[first] = bound * scale
+            value[up] += coefficient * size
+            bound[up] += abs(coefficient) * size_error
 
 
 @njit(cache=True, nogil=True)
-def _moment_family(q, span, low, stop, old, child_base, raised, terms, found, step):  # type: ignore[no-untyped-def]
-    """Moment amplitude of the children low..stop-1 of q: m_0 S(k) + sum_j m_j sqrt(k_j) S(k - e_j).
+def _child_neighbours(q, up, quanta, neighbours, child_base, out, at):  # type: ignore[no-untyped-def]
+    """Lower neighbours of k = q + e_l into ``out`` from ``at`` on: k - e_j is child l of q - e_j."""
+    for neighbour in neighbours:
+        place = child_base[neighbour >> _PLACE] + up
+        out[at] = _packed(place, (neighbour >> _INDEX) & _MASK, neighbour & _MASK)
+        at += 1
+    out[at] = _packed(q, up, quanta)
+    return at + 1
 
-    k = q + e_l: S(k - e_l) = S(q), and S(k - e_j) is child up of q - e_j.
-    """
-    a, b = span
-    index, _, place, factor = old
+
+@njit(cache=True, nogil=True)
+def _moment_of(child, neighbours, terms, root, found, step):  # type: ignore[no-untyped-def]
+    """Moment amplitude m_0 S(k) + sum_j m_j sqrt(k_j) S(k - e_j) of one node, and its bound."""
     constant, linear = terms
     amplitude, error, moment, moment_error = found
-    last = index[b - 1] if b > a else -1
-    for up in range(low, stop):
-        child = child_base[q] + up
-        root_up = raised if up == last else 1.0
-        for x in range(3):
-            term = constant[x] * amplitude[child]
-            value = term
-            size = abs(term)
-            bound = abs(constant[x]) * error[child]
-            term = linear[x, up] * root_up * amplitude[q]
-            value += term
-            size += abs(term)
-            bound += abs(linear[x, up]) * root_up * error[q]
-            for e in range(a, b):
-                if index[e] == up:
-                    continue
-                other = child_base[place[e]] + up
-                term = linear[x, index[e]] * factor[e] * amplitude[other]
-                value += term
-                size += abs(term)
-                bound += abs(linear[x, index[e]]) * factor[e] * error[other]
-            moment[child, x] = value
-            moment_error[child, x] = 1.01 * bound + step * size
+    for x in range(3):
+        value = constant[x] * amplitude[child]
+        size = abs(value)
+        bound = abs(constant[x]) * error[child]
+        for neighbour in neighbours:
+            place = neighbour >> _PLACE
+            factor = linear[x, (neighbour >> _INDEX) & _MASK] * root[neighbour & _MASK]
+            value += factor * amplitude[place]
+            size += abs(factor * amplitude[place])
+            bound += abs(factor) * error[place]
+        moment[child, x] = value
+        moment_error[child, x] = 1.01 * bound + step * size
 
 
 @njit(cache=True, nogil=True)
-def _lower_neighbours(q, up, a, b, old, child_base, root, new, entry):  # type: ignore[no-untyped-def]
-    """Lower neighbours of k = q + e_l into ``new`` from ``entry`` on; returns the next entry.
-
-    k - e_j is child up of q - e_j, and stands at child_base[q - e_j] + up.
-    ``old``, ``new``: (index, quanta, place, factor) columns.
-    """
-    index, quanta, place, factor = old
-    new_index, new_quanta, new_place, new_factor = new
-    own = 0
-    end = b
-    if b > a and index[b - 1] == up:
-        own = quanta[b - 1]
-        end = b - 1
-    for e in range(a, end):
-        new_index[entry] = index[e]
-        new_quanta[entry] = quanta[e]
-        new_place[entry] = child_base[place[e]] + up
-        new_factor[entry] = factor[e]
-        entry += 1
-    new_index[entry] = up
-    new_quanta[entry] = own + 1
-    new_place[entry] = q
-    new_factor[entry] = root[own + 1]
-    return entry + 1
+def _plan(begin, end, shell, last, cost, single):  # type: ignore[no-untyped-def]
+    """(children, children that have children, their neighbours) of inner nodes begin..end-1."""
+    inner, left, at, lists = shell
+    children, parents, entries = 0, 0, 0
+    for s in range(begin, end):
+        tail = last[inner[s]]
+        size = at[s + 1] - at[s]
+        own = lists[at[s + 1] - 1] & _MASK if size else 0
+        if _again(tail, own, left[s], cost):
+            children += 1
+            rest = left[s] - (cost[tail, own + 1] - cost[tail, own])
+            if _has_children(tail, own + 1, rest, cost, single):
+                parents += 1
+                entries += size
+        stop = _stop(tail, left[s], single)
+        children += stop - tail - 1
+        for up in range(tail + 1, stop):
+            if _has_children(up, 1, left[s] - single[up], cost, single):
+                parents += 1
+                entries += size + 1
+    return children, parents, entries
 
 
 @njit(cache=True, nogil=True)
-def grow_tree(M, w, start, start_error, cost, budget, nodes, constant, linear):  # type: ignore[no-untyped-def]
-    """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
+def _fill(begin, end, free, filled, entry, shell, below, tree, ladder, cost, moments, step):  # type: ignore[no-untyped-def]
+    """Children of the inner nodes begin..end-1, written from ``free``, ``filled``, ``entry`` on.
 
-    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s; start = c
-    with relative error ``start_error``. constant (3,), linear (3, D): the moment's terms, or linear
-    (0, D) without.
-    Returns amplitude, error, parent, last, moment, moment_error.
+    Reads only finished shells and writes only its own places, so slices may run side by side.
     """
-    width = cost.shape[1]
-    single = cost[:, 1].copy()
-    amplitude = np.zeros(nodes)
-    error = np.zeros(nodes)
-    parent = np.zeros(nodes, dtype=np.int32)
-    last = np.full(nodes, -1, dtype=np.int16)
-    # child up of node q stands at child_base[q] + up: the first of the family is the one that raises
-    # the last index (if allowed), so up = last fits the same formula
-    child_base = np.zeros(nodes, dtype=np.int32)
-    root = np.sqrt(np.arange(width + 2, dtype=np.float64))
-    amplitude[0] = start
-    error[0] = start_error * abs(start)
+    inner, left, at, lists = shell
+    new_inner, new_left, new_at, new_lists = below
+    amplitude, error, parent, last, child_base = tree
+    M, w, root, single = ladder
+    constant, linear, moment, moment_error = moments
     varies = len(linear) > 0
-    moment = np.zeros((nodes if varies else 0, 3))
-    moment_error = np.zeros((nodes if varies else 0, 3))
-    if varies:
-        for x in range(3):
-            moment[0, x] = constant[x] * start
-            moment_error[0, x] = abs(constant[x]) * (1.01 * error[0] + 30 * UNIT_ROUNDOFF * start)
-    # the nodes of the shell before that have children, and their lower neighbours, cut by ``at``
-    inner = np.zeros(1, dtype=np.int32)
-    left = np.full(1, budget)
-    at = np.zeros(2, dtype=np.int64)
-    old = _columns(0)
-    if _stop(-1, budget, single) == 0:
-        inner = inner[:0]
-    free = 1
-    shell = 0
-    while len(inner) > 0:
-        shell += 1
-        # roundings of one element: a product and a sum for each of at most ``shell`` neighbours,
-        # sqrt, factor, scale, and 16 for the coefficients M, w themselves
-        step = 1.01 * (shell + 22.0) * UNIT_ROUNDOFF
-        places, lists = 0, 0
-        for s in range(len(inner)):  # families: amplitudes, and where they stand
-            q = inner[s]
-            a, b = at[s], at[s + 1]
-            own = old[1][b - 1] if b > a else 0
-            raised = _again(last[q], own, left[s], cost)
-            stop = _stop(last[q], left[s], single)
-            child_base[q] = free - last[q] - (0 if raised else 1)
-            span = (a, b)
-            scale = 1.0 / root[own + 1]
-            _family(q, span, raised, stop, last[q], free, old, M, w, amplitude, error, scale, step)
+    terms = (constant, linear)
+    found = (amplitude, error, moment, moment_error)
+    value, bound = np.empty(len(w)), np.empty(len(w))
+    own_list = np.empty(len(w) + 1, dtype=np.int64)
+    for s in range(begin, end):
+        q = inner[s]
+        neighbours = lists[at[s] : at[s + 1]]
+        tail = last[q]
+        own = neighbours[-1] & _MASK if len(neighbours) else 0
+        raised = _again(tail, own, left[s], cost)
+        low = tail if raised else tail + 1
+        stop = _stop(tail, left[s], single)
+        child_base[q] = free - low
+        _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound)
+        for up in range(low, stop):
+            quanta = 1
+            rest = left[s] - single[up]
+            others = neighbours
+            if up == tail:
+                quanta = own + 1
+                rest = left[s] - (cost[up, quanta] - cost[up, own])
+                others = neighbours[:-1]
+            scale = 1.0 / root[quanta]
+            amplitude[free] = value[up] * scale
+            error[free] = bound[up] * scale
+            parent[free] = q
+            last[free] = up
             if varies:
-                low = last[q] if raised else last[q] + 1
-                found = (amplitude, error, moment, moment_error)
-                terms = (constant, linear)
-                _moment_family(
-                    q, span, low, stop, old, child_base, root[own + 1], terms, found, step
-                )
-            if raised:
-                parent[free] = q
-                last[free] = last[q]
-                rest = left[s] - (cost[last[q], own + 1] - cost[last[q], own])
-                if _has_children(last[q], own + 1, rest, cost, single):
-                    places += 1
-                    lists += b - a
-                free += 1
-            for up in range(last[q] + 1, stop):
-                parent[free] = q
-                last[free] = up
-                rest = left[s] - single[up]
-                if _has_children(up, 1, rest, cost, single):
-                    places += 1
-                    lists += b - a + 1
-                free += 1
-        new = _columns(lists)
-        new_inner = np.empty(places, dtype=np.int32)
-        new_left = np.empty(places)
-        new_at = np.zeros(places + 1, dtype=np.int64)
-        filled, entry = 0, 0
-        for s in range(len(inner)):  # neighbours of those children that have children
-            q = inner[s]
-            a, b = at[s], at[s + 1]
-            own = old[1][b - 1] if b > a else 0
-            stop = _stop(last[q], left[s], single)
-            raised = _again(last[q], own, left[s], cost)
-            for up in range(last[q] if raised else last[q] + 1, stop):
-                quanta = 1
-                rest = left[s] - single[up]
-                if up == last[q]:
-                    quanta = own + 1
-                    rest = left[s] - (cost[up, own + 1] - cost[up, own])
-                if not _has_children(up, quanta, rest, cost, single):
-                    continue
-                new_inner[filled] = child_base[q] + up
+                size = _child_neighbours(q, up, quanta, others, child_base, own_list, 0)
+                _moment_of(free, own_list[:size], terms, root, found, step)
+            if _has_children(up, quanta, rest, cost, single):
+                entry = _child_neighbours(q, up, quanta, others, child_base, new_lists, entry)
+                new_inner[filled] = free
                 new_left[filled] = rest
-                entry = _lower_neighbours(q, up, a, b, old, child_base, root, new, entry)
                 filled += 1
                 new_at[filled] = entry
-        inner, left, at, old = new_inner, new_left, new_at, new
-    return amplitude, error, parent, last, moment, moment_error
+            free += 1
 
 
-@njit(cache=True, nogil=True)
-def _columns(size):  # type: ignore[no-untyped-def]
-    return (
-        np.empty(size, dtype=np.int16),
-        np.empty(size, dtype=np.int16),
-        np.empty(size, dtype=np.int32),
-        np.empty(size, dtype=np.float64),
+def grow_tree(
+    M: Floats,
+    w: Floats,
+    start: float,
+    start_error: float,
+    cost: Floats,
+    budget: float,
+    nodes: int,
+    constant: Floats,
+    linear: Floats,
+) -> QuantaTree:
+    """Build the tree of exactly ``nodes`` sets (from :func:`count_nodes`) with their amplitudes.
+
+    M (D, D), w (D,), cost (D, width): indices sorted by cost[:, 1], costs in ``COST_UNIT``s, at most 4095
+    quanta and indices; start = c with relative error ``start_error``. constant (3,), linear (3, D): the
+    moment's terms, or linear (0, D) without. Large shells are shared by two threads.
+    """
+    single = cost[:, 1].copy()
+    root = np.sqrt(np.arange(cost.shape[1] + 2, dtype=np.float64))
+    amplitude, error = np.empty(nodes), np.empty(nodes)
+    parent, last = np.empty(nodes, dtype=np.int32), np.empty(nodes, dtype=np.int16)
+    child_base = np.empty(nodes, dtype=np.int32)  # child l of node q stands at child_base[q] + l
+    amplitude[0], error[0], parent[0], last[0] = start, start_error * abs(start), 0, -1
+    moment, moment_error = _moment_arrays(constant, linear, start, float(error[0]), nodes)
+    tree = (amplitude, error, parent, last, child_base)
+    ladder = (M, w, root, single)
+    moments = (constant, linear, moment, moment_error)
+    shell = (
+        np.zeros(1 if nodes > 1 else 0, dtype=np.int32),
+        np.full(1, budget),
+        np.zeros(2, dtype=np.int64),
+        np.empty(0, dtype=np.int64),
     )
+    free, quanta = 1, 0
+    while len(shell[0]):
+        quanta += 1
+        # roundings of one element: a product and a sum for each of at most ``quanta`` neighbours,
+        # sqrt, factor, scale, and 16 for the coefficients M, w themselves
+        step = 1.01 * (quanta + 22.0) * UNIT_ROUNDOFF
+        shell, free = _next_shell(shell, free, tree, ladder, cost, moments, step)
+    return QuantaTree(amplitude, error, parent, last, moment, moment_error)
+
+
+def _next_shell(
+    shell: Shell,
+    free: int,
+    tree: tuple[Any, ...],
+    ladder: tuple[Any, ...],
+    cost: Floats,
+    moments: tuple[Any, ...],
+    step: float,
+) -> tuple[Shell, int]:
+    """The shell above ``shell``, its nodes written from place ``free`` on; and the next free place."""
+    last, single = tree[3], ladder[3]
+    slices = _slices(len(shell[0]))
+    plans = _each(lambda a, b: _plan(a, b, shell, last, cost, single), slices)
+    offsets = np.cumsum([(0, 0, 0), *plans], axis=0).tolist()
+    below = _empty_shell(offsets[-1][1], offsets[-1][2])
+    jobs = [
+        (*piece, free + offset[0], offset[1], offset[2])
+        for piece, offset in zip(slices, offsets, strict=False)
+    ]
+    _each(lambda *job: _fill(*job, shell, below, tree, ladder, cost, moments, step), jobs)
+    return below, free + offsets[-1][0]
+
+
+def _moment_arrays(
+    constant: Floats, linear: Floats, start: float, start_error: float, nodes: int
+) -> tuple[Floats, Floats]:
+    """Arrays for the moment's amplitudes, the vacuum's filled in; empty without a moment."""
+    if not len(linear):
+        return np.empty((0, 3)), np.empty((0, 3))
+    moment, error = np.empty((nodes, 3)), np.empty((nodes, 3))
+    moment[0] = constant * start
+    error[0] = np.abs(constant) * (1.01 * start_error + 30 * UNIT_ROUNDOFF * start)
+    return moment, error
+
+
+def _empty_shell(parents: int, entries: int) -> Shell:
+    return (
+        np.empty(parents, dtype=np.int32),
+        np.empty(parents),
+        np.zeros(parents + 1, dtype=np.int64),
+        np.empty(entries, dtype=np.int64),
+    )
+
+
+def _slices(count: int) -> list[tuple[int, int]]:
+    """One slice of a small shell, two of a large one."""
+    if count < THREADED_FROM:
+        return [(0, count)]
+    return [(0, count // 2), (count // 2, count)]
+
+
+def _each(action: Callable[..., Any], jobs: Sequence[tuple[int, ...]]) -> list[Any]:
+    """``action`` on every job, side by side when there are several (the kernels hold no lock)."""
+    if len(jobs) == 1:
+        return [action(*jobs[0])]
+    with ThreadPoolExecutor(len(jobs)) as pool:
+        return list(pool.map(lambda job: action(*job), jobs))
 
 
 @njit(cache=True, nogil=True)

@@ -12,9 +12,14 @@ components,
 .. math::
    L D L^T = X + E, \qquad |E| \le \sqrt2\,\gamma_{n/4 + 24}\, |L|\,|D|\,|L|^T,
 
-hence |E|_F <= sqrt2 gamma sum_k |d_k| |L_{:k}|^2, which is the ``growth`` computed here. The two
-triangular solves of a quadratic form b^T X^{-1} b each add as much (Higham, Accuracy and Stability
-of Numerical Algorithms, 2nd ed., SIAM 2002, Theorems 8.5 and 9.3 with the sums of sec. 3.1).
+The kernels may contract a multiplication and an addition into one fused operation, which only
+leaves a rounding out; nothing else of the order is left to the compiler. Hence
+
+.. math::  |E|_F \le \sqrt2\,\gamma_{n/4+24} \sum_k |d_k|\,|L_{:k}|^2,
+
+the sum being the ``growth`` computed here. The two triangular solves of a quadratic form
+b^T X^{-1} b each add as much (Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed., SIAM
+2002, Theorems 8.5 and 9.3 with the sums of sec. 3.1).
 """
 
 from __future__ import annotations
@@ -38,7 +43,7 @@ def factor_rounding(order: int) -> float:
     return math.sqrt(2.0) * gamma(order / 4.0 + 24.0)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
 def factor(re: Floats, im: Floats) -> float:
     """Overwrite the upper triangle of re + i im by U = D L^T; return the growth.
 
@@ -69,7 +74,7 @@ def factor(re: Floats, im: Floats) -> float:
     return growth
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
 def _apply_four(re: Floats, im: Floats, k: int) -> None:
     """Subtract pivots k..k+3 from all later rows, two rows at a time so that loads are shared."""
     n = re.shape[0]
@@ -119,7 +124,7 @@ def _apply_four(re: Floats, im: Floats, k: int) -> None:
             im[i, i] -= lr * ui + li * ur
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
 def forward(re: Floats, im: Floats, br: Floats, bi: Floats) -> None:
     """Overwrite b by y = L^{-1} b, with the U of :func:`factor`."""
     n = re.shape[0]
@@ -132,7 +137,7 @@ def forward(re: Floats, im: Floats, br: Floats, bi: Floats) -> None:
             bi[j] -= re[k, j] * zi + im[k, j] * zr
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@njit(cache=True, nogil=True, error_model="numpy", fastmath={"contract"})
 def backward(re: Floats, im: Floats, yr: Floats, yi: Floats, xr: Floats, xi: Floats) -> None:
     """x = L^{-T} D^{-1} y, the solution of X x = b when y = L^{-1} b."""
     n = re.shape[0]

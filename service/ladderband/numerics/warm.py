@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from ladderband.numerics.accuracy import Deadline
+from ladderband.numerics.band import interpolated
 from ladderband.numerics.certificate import certified_tables
 from ladderband.numerics.correlation import correlation_function, coupled_modes
 from ladderband.numerics.hermite import forbidden_table, hermite_functions
@@ -21,6 +22,7 @@ def warm() -> None:
     hermite_functions(np.linspace(-1.0, 1.0, 3), 2)
     forbidden_table(2200)  # 2000 quanta and their tails: 10 ms, once
     _warm_bands()
+    interpolated(np.ones(2), np.ones(1))
     _warm_lines()
 
 

@@ -19,6 +19,7 @@ from ladderband.schemas.base import (
     Question,
     StrictSchema,
     accuracy_part,
+    completeness_part,
 )
 from ladderband.schemas.fields import (
     Choice,
@@ -32,6 +33,7 @@ from ladderband.schemas.fields import (
     Truth,
     Whole,
 )
+from ladderband.schemas.line_list import LineColumnsSchema, line_columns
 from ladderband.schemas.transition import TransitionSchema
 from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion, LineShape, Species
 
@@ -278,6 +280,13 @@ class BandsRequest(WeightedTransitionSchema[BandsQuestion]):
         load_default=BandsQuestion.tolerance,
         example=1e-6,
     )
+    label_lines = Whole(
+        "So many of the strongest lines on the axis, of each species, ride along with their "
+        "assignment, down to a hundredth of the strongest. Default 0.",
+        ranges.Range(0, 1000),
+        load_default=0,
+        example=20,
+    )
 
     def build(self, data: dict[str, Any], notes: list[str]) -> BandsQuestion:
         further = self.fields["further_species"].schema  # type: ignore[attr-defined]
@@ -298,6 +307,7 @@ class BandsRequest(WeightedTransitionSchema[BandsQuestion]):
             temperatures_k=tuple(data.get("temperatures_k", np.empty(0)).tolist()),
             both_directions=data["both_directions"],
             tolerance=data["tolerance"],
+            label_lines=data["label_lines"],
         )
 
 
@@ -335,6 +345,12 @@ class StrengthSchema(StrictSchema):
     radiative_lifetime_s = Reply("Emission: 1 / Einstein A, s.", NUMBER, required=False)
 
 
+class LabelsSchema(LineColumnsSchema):
+    """Assigned lines of one species, strongest first, and how far was looked."""
+
+    completeness = completeness_part()
+
+
 class BandSchema(StrictSchema):
     """One band."""
 
@@ -350,6 +366,11 @@ class BandSchema(StrictSchema):
     positions = Many(PositionsSchema, "One entry a species.", required=True)
     strength = Part(StrengthSchema, "Numbers of the whole transition.", required=True)
     range_cm1 = Reply("Holds all but 1e-6 of the lines, cm^-1.", NUMBERS)
+    lines = Many(
+        LabelsSchema,
+        "With label_lines: the strongest lines found by a short enumeration, one entry a species; "
+        "positions without the shift of a bath.",
+    )
     accuracy = accuracy_part("Of the intensities, in their unit.")
 
 
@@ -379,7 +400,7 @@ def band_members(band: Band) -> dict[str, Any]:
         for name in StrengthSchema().fields
         if (value := getattr(band.strength, name)) is not None
     }
-    members = {
+    members: dict[str, Any] = {
         "process": band.process,
         "temperature_k": band.temperature_k,
         "intensity": band.intensity,
@@ -391,6 +412,10 @@ def band_members(band: Band) -> dict[str, Any]:
     }
     if band.moments_on_axis is not None:
         members["moments_on_axis"] = band.moments_on_axis
+    if band.lines:
+        members["lines"] = [
+            {**line_columns(found), "completeness": found.completeness} for found in band.lines
+        ]
     return members
 
 

@@ -18,16 +18,29 @@ from ladderband.numerics.band import (
     reference_density,
 )
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.line_shape import Bath, Broadening, InstrumentFunction, broadening
+from ladderband.numerics.line_list import LineList
+from ladderband.numerics.line_shape import (
+    FIT_REACH,
+    Bath,
+    Broadening,
+    InstrumentFunction,
+    broadening,
+)
 from ladderband.numerics.moments import vertical_energy
 from ladderband.numerics.reversal import reversed_transition
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Process, Transition
 from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
 from ladderband.usecases.limits import Limits
+from ladderband.usecases.lines import LinesQuestion, lines
 
 MAX_TIMES = 2**18
 """Samples of the correlation function in one band: a width of 1/20000 of the band's range."""
+
+LABEL_THRESHOLD = 0.01
+"""Weakest line labelled, as a share of the strongest."""
+LABEL_SECONDS = 0.5
+"""Work spent on the labels of one species."""
 
 ADVICE = "Give wider lines, a shorter axis, a larger tolerance or fewer bands in one request."
 
@@ -74,7 +87,8 @@ class BandsQuestion:
     """Bands of a mixture of species at one or several temperatures, on one axis.
 
     ``temperatures_k`` empty: the species' own. ``both_directions`` adds the reverse process.
-    ``tolerance`` is the bound aimed at, relative to the maximum.
+    ``tolerance`` is the bound aimed at, relative to the maximum. ``label_lines``: so many of the
+    strongest lines on the axis, of each species, ride along for labels.
     """
 
     species: tuple[Species, ...]
@@ -84,6 +98,7 @@ class BandsQuestion:
     temperatures_k: tuple[float, ...] = ()
     both_directions: bool = False
     tolerance: float = 1e-6
+    label_lines: int = 0
 
 
 @dataclass(frozen=True)
@@ -110,7 +125,8 @@ class Band:
 
     ``moments`` are those of the lines (closed form, bath's shift included); ``moments_on_axis``
     those of the broadened band over the axis given (None where there is no intensity).
-    ``range_cm1`` holds all but 1e-6 of the lines.
+    ``range_cm1`` holds all but 1e-6 of the lines. ``lines``: one list a species when labels were
+    asked for, without the shift of a bath; its completeness says how far it looked.
     """
 
     process: Process
@@ -122,6 +138,7 @@ class Band:
     positions: tuple[Positions, ...]
     strength: Strength
     range_cm1: tuple[float, float]
+    lines: tuple[LineList, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -212,27 +229,31 @@ def _groups(question: BandsQuestion) -> list[tuple[Species, ...]]:
 
 
 def estimate_seconds(question: BandsQuestion) -> float:
-    """Estimated seconds of work, without doing any.
+    """Estimated seconds of work, without doing any: the warmest band's, times the number of bands.
 
-    Twelve standard deviations stand for the proven range, 3.5 decay times a width for the window.
+    25 standard deviations stand for the proven range; right within a factor of three, and the exact
+    plan is held against the limit before chi is evaluated.
     """
-    bands_count = max(1, len(question.temperatures_k)) * (2 if question.both_directions else 1)
-    total = 2e-7 * len(question.axis.values) * len(question.species)
-    for species in question.species:
+    groups = _groups(question)
+    warmest = max(groups, key=lambda group: group[0].transition.temperature_k)
+    total = 2e-7 * len(question.axis.values) * len(warmest)
+    total += 0.1 * len(warmest) * (question.label_lines > 0)
+    for species in warmest:
         transition = species.transition
-        n = len(transition.modes)
-        f, s = transition.wavenumbers_final, transition.displacements**2 / 2.0
-        width = max(question.line_shape.fwhm_cm1, question.line_shape.fwhm_lorentzian_cm1, 1e-3)
-        reach = 12.0 * math.sqrt(float(s @ f**2) + 1.0) + 10.0 * width
-        times = min(2.0 * reach / width, float(MAX_TIMES))
-        total += 0.005 + 4e-9 * n**3 * (transition.mixing is not None)
-        total += times * seconds_a_time(n, transition.mixing is not None)
-    return bands_count * total
+        n, mixed = len(transition.modes), transition.mixing is not None
+        shape = question.line_shape.at(transition.temperature_k, transition.direction)
+        period = 25.0 * _KEPT.get(transition).moments.standard_deviation + 2.0 * shape.light_reach(
+            1e-6
+        )
+        period /= FIT_REACH if shape.gamma else 1.0
+        times = min(shape.end(1e-9 * shape.peak) * period / (2.0 * math.pi), float(MAX_TIMES))
+        total += 0.003 + 2e-8 * n**3 * mixed + times * seconds_a_time(n, mixed)
+    return len(groups) * total
 
 
 def seconds_a_time(n: int, mixed: bool) -> float:
     """Seconds of one time point of n modes, all mixed or none."""
-    return 2e-6 + (4.5e-10 * n**3 + 6e-8 * n**2 if mixed else 6e-9 * n)
+    return 1e-6 + (3.5e-10 * n**3 + 1.2e-8 * n**2 if mixed else 6e-9 * n)
 
 
 def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...]) -> _Part:
@@ -261,7 +282,7 @@ def _seconds_left(part: _Part) -> float:
     each = sum(seconds_a_time(len(block), mixed=True) for block in modes.mixed)
     if modes.uncoupled is not None:
         each += seconds_a_time(len(modes.uncoupled.g), mixed=False)
-    return missing * each + 1e-6 * part.sampling.count + 1e-6 * len(part.energies)
+    return missing * each + 3e-7 * part.sampling.count + 2e-7 * len(part.energies)
 
 
 def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Band:
@@ -288,7 +309,23 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
         tuple(_positions(part) for part in parts),
         _mixture_strength(question, process, parts),
         _range(parts),
+        tuple(_labels(question, part.species.transition, deadline) for part in parts)
+        if question.label_lines
+        else (),
     )
+
+
+def _labels(question: BandsQuestion, transition: Transition, deadline: Deadline) -> LineList:
+    """The strongest lines on the axis, as far as a short enumeration finds them."""
+    wavenumbers = question.axis.wavenumbers
+    asked = LinesQuestion(
+        transition,
+        threshold=LABEL_THRESHOLD,
+        max_lines=question.label_lines,
+        low_cm1=float(wavenumbers.min()),
+        high_cm1=float(wavenumbers.max()),
+    )
+    return lines(asked, Limits(work_s=LABEL_SECONDS), deadline).lines
 
 
 def _density(part: _Part, deadline: Deadline) -> Density:
@@ -298,6 +335,7 @@ def _density(part: _Part, deadline: Deadline) -> Density:
         part.shape,
         part.sampling,
         part.energies,
+        float(np.abs(part.energies).max()) + abs(part.species.transition.origin_cm1),
     )
 
 

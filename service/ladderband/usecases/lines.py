@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -87,7 +87,7 @@ def lines(question: LinesQuestion, limits: Limits, deadline: Deadline) -> LinesA
     _check_cost(question, limits, limit)
     found = _enumerated(question, limit, deadline)
     return LinesAnswer(
-        lines=_sorted(found.selected, question.by),
+        lines=found.selected if question.by == "intensity" else found.selected.by_position(),
         enumerated=found.enumerated,
         enumerated_lines=found.count,
         modes=mode_reports(question.transition),
@@ -162,20 +162,6 @@ def _enumerated(question: LinesQuestion, limit: int, deadline: Deadline) -> Enum
     if found.enumerated.missing_at_most <= wanted or found.count >= limit:
         return found
     return transition_lines(question.transition, wanted, selection, limit, deadline)
-
-
-def _sorted(found: LineList, by: str) -> LineList:
-    """The list comes strongest first."""
-    if by == "intensity":
-        return found
-    order = np.lexsort((-found.intensity, found.position_cm1))
-    return replace(
-        found,
-        position_cm1=found.position_cm1[order],
-        intensity=found.intensity[order],
-        v_initial=found.v_initial[order],
-        v_final=found.v_final[order],
-    )
 
 
 def mode_reports(transition: Transition) -> tuple[ModeReport, ...]:

@@ -8,7 +8,12 @@ import numpy as np
 
 from ladderband.numerics.accuracy import Accuracy, Deadline
 from ladderband.numerics.balls import ExactPair
-from ladderband.numerics.certificate import CertifiedTables, certified_tables, ladder_is_hopeless
+from ladderband.numerics.certificate import (
+    CertifiedTables,
+    certified_tables,
+    grid_reach,
+    ladder_is_hopeless,
+)
 from ladderband.numerics.decimal_tables import (
     DecimalTables,
     Undecided,
@@ -128,6 +133,8 @@ def _float_seconds(question: OverlapsQuestion, rows: int, columns: int) -> float
         grid_share = float(np.mean(strength > 6.0))
     else:
         grid_share = 1.0
+    if question.tolerance < grid_reach(rows - 1, columns - 1):
+        return count * (1e-3 + 3e-6 * elements)  # balls
     points = grid_points(pair_coefficients(_widest(question.pairs)), 0, rows - 1, columns - 1)
     grid = 2e-5 + 5e-11 * elements * points + 1.5e-9 * (rows + columns) * points
     ladder = 1e-6 + 7e-9 * elements

@@ -10,10 +10,10 @@ import numpy as np
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.line_list import LineList
+from ladderband.numerics.line_selection import uncoupled_lines
 from ladderband.numerics.progression import (
     QUANTA_MAX,
     ModeSticks,
-    combined_lines,
     complete_mode_sticks,
     final_quanta,
     thermal_quanta,
@@ -54,10 +54,10 @@ def progressions(question: ProgressionsQuestion, limits: Limits, deadline: Deadl
     limits.admit(estimate_seconds(question), advice)
     sticks = [_mode_sticks(question, mode, deadline) for mode in question.transition.modes]
     limits.admit(joint_seconds(sticks, question.threshold), advice)
-    lines = combined_lines(
+    found = uncoupled_lines(
         question.transition, sticks, question.threshold, question.max_lines, deadline
     )
-    return replace(lines, warnings=_warnings(question, sticks))
+    return replace(found.by_position(), warnings=_warnings(question, sticks))
 
 
 def _check_uncoupled(transition: Transition) -> None:

@@ -60,6 +60,7 @@ COLD = {
     "axis": {"unit": "cm-1", "start": 18600.0, "stop": 25400.0, "step": 4.0},
     "line_shape": {"kind": "voigt", "fwhm_cm1": 18.0, "fwhm_lorentzian_cm1": 6.0},
     "scale": "photon_rate",
+    "label_lines": 12,
 }
 PHOTOELECTRON = {
     "process": "photoelectron",

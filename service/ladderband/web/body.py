@@ -85,7 +85,7 @@ def parse(raw: bytes, max_depth: int) -> Any:
 
 def _count_members(value: Any, max_depth: int) -> int:
     members, level = 0, [value]
-    for _ in range(max_depth + 1):
+    for _ in range(max_depth):
         inner: list[Any] = []
         for node in level:
             if type(node) is dict:

@@ -44,17 +44,17 @@ def docs_home() -> WerkzeugResponse:
 @blueprint.get("/docs/")
 def docs() -> Response:
     """The documentation page."""
-    return _guarded(send_from_directory(OWN, "docs.html"))
+    return guarded(send_from_directory(OWN, "docs.html"))
 
 
 @blueprint.get("/docs/<name>")
 def docs_file(name: str) -> Response:
     """A file of the documentation page."""
     if name == "docs.js":
-        return _guarded(send_from_directory(OWN, name))
+        return guarded(send_from_directory(OWN, name))
     if name not in SHOWN:
         abort(404)
-    return _guarded(send_from_directory(FILES, name))
+    return guarded(send_from_directory(FILES, name))
 
 
 @blueprint.get("/problems/<slug>")
@@ -67,11 +67,12 @@ def problem(slug: str) -> Response:
                 f"<!doctype html><title>{title}</title><h1>{title}</h1>"
                 f"<p>HTTP status {known.status}.</p><p>{meaning}</p>"
             )
-            return _guarded(Response(text, content_type="text/html; charset=utf-8"))
+            return guarded(Response(text, content_type="text/html; charset=utf-8"))
     abort(404)
 
 
-def _guarded(response: Response) -> Response:
+def guarded(response: Response) -> Response:
+    """A page of ours: scripts and pictures from here only."""
     response.headers["Content-Security-Policy"] = POLICY
     response.headers["X-Content-Type-Options"] = "nosniff"
     return response
