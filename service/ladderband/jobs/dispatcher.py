@@ -37,6 +37,9 @@ log = logging.getLogger("ladderband.engine")
 POLL_S = 0.03
 """How long new work may wait for an idle engine; an empty look costs 0.2 ms."""
 
+BUSY_S = 0.25
+"""The same while there is no free place; a shard that ends is noticed at once."""
+
 UPKEEP_S = 0.5
 """Between two looks for cancelled work; leases are renewed in the same step."""
 
@@ -169,7 +172,7 @@ class Engine:
             log.warning("%s Trying again in %g s.", error, RETRY_S)
             self._collect(RETRY_S)
             return
-        self._collect(POLL_S)
+        self._collect(POLL_S if self.executor.free else BUSY_S)
 
     def _collect(self, timeout_s: float) -> None:
         """Take in what has ended."""
