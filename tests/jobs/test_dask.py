@@ -134,6 +134,7 @@ def disturbed(cluster: Cluster, victim: str) -> None:
     cluster.scheduler = cluster.start_scheduler()
 
 
+@pytest.mark.timeout(900)
 @pytest.mark.parametrize("victim", ["worker", "scheduler"])
 @pytest.mark.parametrize(
     ("points", "kills"),
