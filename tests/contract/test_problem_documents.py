@@ -223,6 +223,11 @@ def test_table_above_the_limit(client):
     assert document["numbers"] == 5000 * 31 * 31
 
 
+def test_wavefunctions_above_the_limit(client):
+    body = {"mode": MODE, "v_initial_max": 200, "v_final_max": 200, "points": 100_001}
+    problem_of(client.post("/v1/wavefunctions", json=body), 422, "answer-too-large")
+
+
 def test_work_above_the_limit(client):
     body = ONE | {"v_initial_max": 1000, "v_final_max": 1000, "digits": 1000}
     document = problem_of(client.post("/v1/overlaps", json=body), 422, "cost-limit")

@@ -195,6 +195,24 @@ def test_labels_are_the_strongest_lines_on_the_axis():
     assert ask().bands[0].lines == ()
 
 
+def test_band_goes_without_labels_where_they_would_take_long():
+    rng = np.random.default_rng(3)
+    wavenumbers = rng.uniform(30.0, 400.0, 90)
+    many = Transition(
+        tuple(Mode(float(w), float(w), 0.9) for w in wavenumbers), "absorption", 20000.0, 400.0
+    )
+    answer = ask(Species(many), label_lines=10)
+    assert answer.bands[0].lines == () or len(answer.bands[0].lines[0]) <= 10
+    assert bool(answer.bands[0].lines) != any("No labels" in text for text in answer.warnings)
+
+
+def test_scale_is_refused_before_any_work(monkeypatch):
+    asked = counted(monkeypatch)
+    with pytest.raises(DomainError, match="belongs to emission"):
+        ask(scale="photon_rate")
+    assert asked == []
+
+
 # --- what is kept ---
 
 

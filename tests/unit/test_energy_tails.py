@@ -91,3 +91,11 @@ def test_any_guess_of_the_width_gives_a_true_range():
         beyond = (energies < found.low) | (energies > found.high)
         assert weights[beyond].sum() <= 1e-8
         assert found.high - found.low < 1.5 * (ranges[1].high - ranges[1].low)
+
+
+def test_a_range_nobody_can_prove_is_refused():
+    from ladderband.numerics.errors import PrecisionNotReached
+
+    modes = coupled_modes(Transition((Mode(1e-9, 1e5, 60.0),), temperature_k=1e5))
+    with pytest.raises(PrecisionNotReached, match="No range of energies"):
+        energy_range(modes, 1e-300, 1e-3)

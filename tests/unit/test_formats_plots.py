@@ -53,6 +53,7 @@ CASES = {
     "one cell": (overlap_plot, overlap_answer(0)),
     "table of strings": (overlap_plot, overlap_answer(2, digits=30)),
     "wavefunctions": (wavefunction_plot, wave_answer(4)),
+    "very many levels": (wavefunction_plot, wave_answer(200)),
     "one level": (wavefunction_plot, wave_answer(0)),
 }
 

@@ -50,3 +50,10 @@ def test_vertical_energy_is_the_reorganisation_energy():
 def test_single_line_has_no_skewness():
     found = line_moments(Transition((Mode(400.0, 400.0, 0.0),)))
     assert (found.mean, found.standard_deviation, found.skewness) == (0.0, 0.0, 0.0)
+
+
+def test_rounding_makes_no_skewness():
+    from ladderband.numerics.moments import skewness
+
+    assert skewness(1e-300, 1e-120) == 0.0
+    assert skewness(8.0, 2.0) == 1.0

@@ -124,3 +124,17 @@ def test_a_product_that_explodes_is_refused_with_the_estimate() -> None:
 def test_assignment_notation() -> None:
     v, n = np.array([[0, 1, 0], [0, 0, 0]], np.int32), np.array([[2, 0, 0], [0, 0, 0]], np.int32)
     assert assignments(v, n) == ["1^2_0 2^0_1", "0^0_0"]
+
+
+@pytest.mark.parametrize("quanta", [0, 200])
+def test_a_mode_without_any_intensity_in_range_gives_no_lines(quanta: int) -> None:
+    """A displacement of 49 with too few quanta: every stick is below 1e-300 or exactly zero."""
+    lines = ask(
+        Mode(66276.0, 78530.0, 1e-9),
+        Mode(39406.0, 14830.0, -48.7),
+        v_initial_max=0,
+        v_final_max=quanta,
+        threshold=0.5,
+    )
+    assert lines.completeness.missing_at_most >= 1.0 - 1e-9
+    assert np.all(lines.intensity < 1e-20)

@@ -127,6 +127,7 @@ def test_head_of_a_query(client):
 def test_log_line_is_one_json_object(capfd):
     app = create_app(Settings(log_requests=True))
     app.test_client().get(QUERY, headers={"X-Request-ID": "run-17"})
+    app.config["LEDGER"].flush()
     (line,) = capfd.readouterr().err.splitlines()
     entry = json.loads(line)
     assert entry["request_id"] == "run-17"

@@ -19,7 +19,7 @@ from ladderband.numerics.axis import in_unit
 from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion
 
 _AXIS_NAMES = {
-    "cm-1": "wavenumber / cm$^{-1}$",
+    "cm-1": "wavenumber / cm⁻¹",
     "eV": "photon energy / eV",
     "nm": "vacuum wavelength / nm",
     "THz": "frequency / THz",
@@ -27,9 +27,9 @@ _AXIS_NAMES = {
 _SCALE_NAMES = {
     "relative": "relative intensity",
     "unit_area": "intensity, unit area",
-    "molar_absorption_coefficient": "molar absorption coefficient / L mol$^{-1}$ cm$^{-1}$",
-    "cross_section": "cross-section / cm$^2$",
-    "photon_rate": "photon rate / s$^{-1}$ per {axis}",
+    "molar_absorption_coefficient": "molar absorption coefficient / L mol$^{-1}$ cm⁻¹",
+    "cross_section": "cross-section / cm²",
+    "photon_rate": "photon rate / s⁻¹ per {axis}",
     "radiated_power": "radiated power / W per {axis}",
 }
 MAX_NAMED = 12
@@ -112,7 +112,7 @@ def _label_lines(ax: Axes, look: Look, answer: BandsAnswer) -> None:
 
 
 def _unit(unit: str) -> str:
-    return "cm$^{-1}$" if unit == "cm-1" else unit
+    return "cm⁻¹" if unit == "cm-1" else unit
 
 
 def _label(band: Band, answer: BandsAnswer) -> str:

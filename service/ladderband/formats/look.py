@@ -73,9 +73,10 @@ def picture(sheet: Sheet, draw: Draw, kind: str) -> bytes:
         )
         draw(figure, look)
         if sheet.title:
-            figure.suptitle(
+            heading = figure.suptitle(
                 _plain(sheet.title), color=look.ink, fontsize=11, x=0.02, ha="left", weight="bold"
             )
+            heading.set_parse_math(False)
         return _svg(figure, sheet) if kind == "svg" else _png(figure)
 
 
@@ -105,9 +106,9 @@ def _png(figure: Figure) -> bytes:
 
 
 def _plain(text: str) -> str:
-    """Text in which nothing starts a formula, and what our font lacks is a box."""
+    """Text in which what our font lacks is a box."""
     glyphs = get_font(findfont(FontProperties())).get_charmap()
-    return "".join(char if ord(char) in glyphs else "\u25a1" for char in text).replace("$", r"\$")
+    return "".join(char if ord(char) in glyphs else "\u25a1" for char in text)
 
 
 def axes(figure: Figure, look: Look, *place: Any, **shared: Any) -> Axes:

@@ -64,8 +64,6 @@ class Density:
 
     value: Floats
     bound: float
-    low: float
-    high: float
 
 
 def reference_density(energies: EnergyRange, shape: Broadening) -> float:
@@ -83,7 +81,7 @@ def plan_sampling(
 
     ``allowed`` is the density the sampling may be wrong by; the error really reached is returned.
     """
-    left = min(0.01, 0.03 * allowed / shape.kernel_top)
+    left = min(0.01, max(0.03 * allowed / shape.kernel_top, 1e-300))
     light = shape.light_reach(left)
     low, high = axis_low, axis_high
     cubic = shape.cubic_tail
@@ -178,7 +176,7 @@ def density(
     bound = sampling.error + wave + rounding + transform + slope
     if not math.isfinite(bound):
         raise PrecisionNotReached("The band could not be bounded.", "finite", "infinite")
-    return Density(value, bound * (1.0 + 1e-9), sampling.low, sampling.high)
+    return Density(value, bound * (1.0 + 1e-9))
 
 
 def interpolated(grid: Floats, place: Floats) -> tuple[Floats, float]:

@@ -43,7 +43,7 @@ BALL_ELEMENTS = 200_000
 
 def grid_reach(v_initial_max: int, v_final_max: int) -> float:
     """A tolerance the grid is sure to meet, from a fit: below it, expect balls (only for the cost)."""
-    return 1e-12 + 6e-14 * max(v_initial_max, v_final_max)
+    return 1e-12 + 4.9e-14 * max(v_initial_max, v_final_max)
 
 
 def ladder_is_hopeless(v_initial_max: int, v_final_max: int, tolerance: float) -> bool:

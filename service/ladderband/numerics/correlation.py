@@ -157,6 +157,7 @@ def correlation_function(
     factor, factor_bound = _moment_factor(modes, parts)
     size = np.abs(overlap)
     value = overlap * factor / modes.total
+    log_bound = np.minimum(log_bound, 30.0)  # chi <= 1 is the better bound long before
     error = np.abs(value) * (np.expm1(log_bound) + 16.0 * UNIT_ROUNDOFF)
     error += size * np.exp(log_bound) * factor_bound / modes.total
     error += modes.thermal_rounding

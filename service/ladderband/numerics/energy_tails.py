@@ -25,6 +25,7 @@ import numpy as np
 from scipy import linalg
 
 from ladderband.numerics.correlation import CoupledModes
+from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.mixed_modes import ModeBlock
 from ladderband.numerics.symmetric_factor import gamma
 from ladderband.numerics.transition import Floats
@@ -130,6 +131,11 @@ def energy_range(modes: CoupledModes, outside: float, scale: float) -> EnergyRan
     ``scale`` is a guess of the band's standard deviation in cm^-1; any guess gives a true range, a
     good one gives a narrow range. The exponent theta is searched on a grid of factors sqrt2, then
     refined; every theta tried gives a valid bound.
+
+    Raises
+    ------
+    PrecisionNotReached
+        No theta proves anything.
     """
     cold = all(bool(np.isinf(block.exponents).all()) for block in modes.mixed)
     cold = cold and (modes.uncoupled is None or bool(np.isinf(modes.uncoupled.exponents).all()))
@@ -137,6 +143,13 @@ def energy_range(modes: CoupledModes, outside: float, scale: float) -> EnergyRan
     guess = math.sqrt(2.0 * share) / scale
     high = _edge(modes, share, guess)
     low = 0.0 if cold else -_edge(modes, share, -guess)
+    if not math.isfinite(high - low):
+        raise PrecisionNotReached(
+            "No range of energies could be proved to hold the band in double precision: the "
+            "displacements, the changes of the wavenumbers or the temperature are too large.",
+            "finite",
+            "infinite",
+        )
     return EnergyRange(float(low - 1e-12 * abs(low)), float(high + 1e-12 * abs(high)), outside)
 
 

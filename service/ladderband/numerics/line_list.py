@@ -52,12 +52,9 @@ def assignments(v_initial: Quanta, v_final: Quanta) -> list[str]:
     of one (common practice in vibronic spectroscopy; modes count from 1). A line without any quanta
     is ``0^0_0``, the 0-0 line.
     """
-    names = []
-    for initial, final in zip(v_initial.tolist(), v_final.tolist(), strict=True):
-        parts = [
-            f"{k}^{n}_{v}"
-            for k, (v, n) in enumerate(zip(initial, final, strict=True), start=1)
-            if v or n
-        ]
-        names.append(" ".join(parts) or "0^0_0")
-    return names
+    row, mode = np.nonzero(v_initial | v_final)
+    quanta = (mode + 1).tolist(), v_final[row, mode].tolist(), v_initial[row, mode].tolist()
+    parts = [f"{k}^{n}_{v}" for k, n, v in zip(*quanta, strict=True)]
+    ends = np.cumsum(np.bincount(row, minlength=len(v_final))).tolist()
+    starts = [0, *ends]
+    return [" ".join(parts[start:end]) or "0^0_0" for start, end in zip(starts, ends, strict=False)]

@@ -64,8 +64,7 @@ def uncoupled_lines(
 ) -> LineList:
     """Joint lines of uncoupled modes, one list of sticks each: at least ``threshold`` of the strongest."""
     parts = [_of_sticks(mode) for mode in sticks]
-    cut = threshold * math.prod(float(part.intensity.max()) for part in parts)
-    joint = _products(parts, cut, deadline)
+    joint = _products(parts, threshold, deadline)
     blocks = [BlockIndices((k,), (k,)) for k in range(len(sticks))]
     selection = Selection(max_lines=max_lines)
     return _selected(transition, blocks, parts, joint, selection, _sum_error(parts))
@@ -125,7 +124,7 @@ def transition_lines(
         _selected(transition, blocks, parts, joint, selection, error),
         _completeness(joint.intensity, error),
         len(joint.intensity),
-        float(joint.intensity.max()),
+        float(joint.intensity.max(initial=0.0)),
     )
 
 
@@ -138,7 +137,8 @@ def _completeness(intensity: Floats, error: float) -> Completeness:
     """Captured sum, and the proven limit of what is not in it."""
     captured = float(intensity.sum())
     rounding = (len(intensity) / 64.0 + 60.0) * UNIT_ROUNDOFF
-    return Completeness(captured, 1.0, max(0.0, 1.0 - captured + error + rounding))
+    missing = 1.0 - captured + error + rounding
+    return Completeness(captured, 1.0, min(1.0, max(0.0, missing)))
 
 
 @dataclass(frozen=True)
@@ -151,12 +151,12 @@ class _Joint:
 
 
 def _joint(parts: list[BlockLines], tolerance: float, limit: int, deadline: Deadline) -> _Joint:
-    cut = _cut_for(parts, tolerance, limit) if len(parts) > 1 else 0.0
-    return _products(parts, cut, deadline)
+    least = _least_for(parts, tolerance, limit) if len(parts) > 1 else 0.0
+    return _products(parts, least, deadline)
 
 
-def _cut_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
-    """Smallest joint intensity to keep so that half the tolerance is missing, or ``limit`` lines.
+def _least_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
+    """Weakest joint line to keep, relative to the strongest: half the tolerance missing, or ``limit``.
 
     From the histogram of logarithms of the intensities, convolved over the blocks: a prediction.
     """
@@ -164,10 +164,8 @@ def _cut_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
     count = np.zeros(bins)
     caught = np.zeros(bins)
     count[0] = caught[0] = 1.0
-    peak = 0.0
     for part in parts:
-        highest = float(part.intensity.max())
-        peak += math.log(highest)
+        highest = part.intensity.max(initial=0.0) or 1.0
         with np.errstate(divide="ignore"):
             depth = -np.log(part.intensity / highest) / width
         inside = depth < bins - 1
@@ -179,38 +177,40 @@ def _cut_for(parts: list[BlockLines], tolerance: float, limit: int) -> float:
     missing = caught.sum() - np.cumsum(caught)
     wanted = int(np.searchsorted(-missing, -0.5 * tolerance)) + len(parts)
     allowed = int(np.searchsorted(np.cumsum(count), limit)) - 1
-    return math.exp(peak - width * max(1, min(wanted, allowed, bins - 1)))
+    return math.exp(-width * max(1, min(wanted, allowed, bins - 1)))
 
 
 def _convolved(a: Floats, b: NDArray[Any]) -> Floats:
     return np.maximum(np.asarray(fftconvolve(a, b), dtype=np.float64)[: len(a)], 0.0)
 
 
-def _products(parts: list[BlockLines], cut: float, deadline: Deadline) -> _Joint:
-    """All joint lines of at least ``cut``; a partial product that can not reach it is dropped."""
-    if len(parts) == 1:
-        kept = np.flatnonzero((parts[0].intensity >= cut) & (parts[0].intensity > 0.0))
-        place = kept.astype(np.int32)[:, None]
-        return _Joint(parts[0].intensity[kept], parts[0].bound[kept], place)
-    peaks = [float(part.intensity.max()) for part in parts]
-    intensity, bound = np.ones(1), np.zeros(1)
+def _products(parts: list[BlockLines], least: float, deadline: Deadline) -> _Joint:
+    """Joint lines of at least ``least`` times the strongest one, and not zero in float64.
+
+    Everything is compared relative to the strongest line of each block, so a partial product below
+    ``least`` can never recover and is dropped, and nothing underflows.
+    """
+    size = 1
+    intensity, bound, relative = np.ones(1), np.zeros(1), np.ones(1)
     places = np.empty((1, 0), np.int32)
-    for index, part in enumerate(parts):
-        need = cut / math.prod(peaks[index + 1 :])
-        useful = np.flatnonzero(part.intensity * float(intensity.max()) >= need)
-        pairs = []
-        for begin in range(0, len(intensity), CHUNK):
+    for part in parts:
+        ratio = part.intensity / (part.intensity.max(initial=0.0) or 1.0)
+        useful = np.flatnonzero((ratio >= least) & (ratio > 0.0))
+        pairs = [(np.empty(0, np.int64), np.empty(0, np.int64))]
+        for begin in range(0, size, CHUNK):
             deadline.check()
-            product = intensity[begin : begin + CHUNK, None] * part.intensity[useful]
-            row, column = np.nonzero((product >= need) & (product > 0.0))
+            product = relative[begin : begin + CHUNK, None] * ratio[useful]
+            row, column = np.nonzero((product >= least) & (product > 0.0))
             pairs.append((row + begin, useful[column]))
         row, column = (np.concatenate(part_of) for part_of in zip(*pairs, strict=True))
+        relative = relative[row] * ratio[column]
         joint = intensity[row] * part.intensity[column]
         raised = (intensity[row] + bound[row]) * (part.intensity[column] + part.bound[column])
         bound = (raised - joint) * 1.001 + 4.0 * UNIT_ROUNDOFF * joint
-        intensity = joint
+        intensity, size = joint, len(joint)
         places = np.column_stack([places[row], column.astype(np.int32)])
-    return _Joint(intensity, bound, places)
+    kept = intensity > 0.0
+    return _Joint(intensity[kept], bound[kept], places[kept])
 
 
 def _selected(
@@ -222,7 +222,9 @@ def _selected(
     error: float,
 ) -> LineList:
     """The strongest lines inside the selection, strongest first."""
-    strong = np.flatnonzero(joint.intensity >= selection.threshold * joint.intensity.max(initial=0.0))
+    strong = np.flatnonzero(
+        joint.intensity >= selection.threshold * joint.intensity.max(initial=0.0)
+    )
     order = strong[np.argsort(-joint.intensity[strong], kind="stable")]
     chosen, v, n, position = _inside(transition, blocks, parts, joint, order, selection)
     return LineList(

@@ -47,8 +47,12 @@ class LineMoments:
     @property
     def skewness(self) -> float:
         """third / variance^(3/2); 0 for a single line."""
-        deviation = self.standard_deviation
-        return self.third / deviation**3 if deviation > 0.0 else 0.0
+        return skewness(self.third, self.standard_deviation)
+
+
+def skewness(third: float, deviation: float) -> float:
+    """third / deviation^3; 0 below 1e-6 cm^-1, where both are rounding."""
+    return third / deviation**3 if deviation > 1e-6 else 0.0
 
 
 def line_moments(transition: Transition) -> LineMoments:

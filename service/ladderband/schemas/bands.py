@@ -44,7 +44,7 @@ MAX_POINTS = 100_001
 _VALUE = ranges.Range(-1e9, 1e9)
 _WIDTH = ranges.Range(0.0, 1e5, low_open=True)
 _STEP = ranges.Range(0.0, 1e9, low_open=True)
-_WEIGHT = ranges.Range(0.0, 1e9, low_open=True)
+_WEIGHT = ranges.Range(1e-9, 1e9)
 
 
 class AxisSchema(StrictSchema):

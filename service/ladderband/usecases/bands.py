@@ -17,7 +17,7 @@ from ladderband.numerics.band import (
     plan_sampling,
     reference_density,
 )
-from ladderband.numerics.errors import DomainError
+from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.numerics.line_list import LineList
 from ladderband.numerics.line_shape import (
     FIT_REACH,
@@ -26,12 +26,12 @@ from ladderband.numerics.line_shape import (
     InstrumentFunction,
     broadening,
 )
-from ladderband.numerics.moments import vertical_energy
+from ladderband.numerics.moments import skewness, vertical_energy
 from ladderband.numerics.reversal import reversed_transition
 from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Process, Transition
 from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
-from ladderband.usecases.limits import Limits
+from ladderband.usecases.limits import CostLimitExceeded, Limits
 from ladderband.usecases.lines import LinesQuestion, lines
 
 MAX_TIMES = 2**18
@@ -39,8 +39,10 @@ MAX_TIMES = 2**18
 
 LABEL_THRESHOLD = 0.01
 """Weakest line labelled, as a share of the strongest."""
-LABEL_SECONDS = 0.5
+LABEL_SECONDS = 0.1
 """Work spent on the labels of one species."""
+LABEL_DEADLINE_S = 1.0
+"""Time after which a band goes without labels."""
 
 ADVICE = "Give wider lines, a shorter axis, a larger tolerance or fewer bands in one request."
 
@@ -183,6 +185,8 @@ def bands(question: BandsQuestion, limits: Limits, deadline: Deadline) -> BandsA
         The deadline passed.
     """
     groups = _groups(question)
+    for group in groups:  # what a scale refuses is refused before any work
+        _factors(question, group[0].transition.process, 1.0)
     limits.admit(estimate_seconds(question), ADVICE)
     planned = []
     for group in groups:
@@ -198,6 +202,11 @@ def bands(question: BandsQuestion, limits: Limits, deadline: Deadline) -> BandsA
         _stokes_shifts(question, found),
         _warnings(question, found),
     )
+
+
+def _factors(question: BandsQuestion, process: Process, moment2: float) -> Floats:
+    axis = question.axis
+    return scale_factors(question.scale, process, axis.wavenumbers, axis.jacobian, moment2)
 
 
 def _groups(question: BandsQuestion) -> list[tuple[Species, ...]]:
@@ -247,13 +256,23 @@ def estimate_seconds(question: BandsQuestion) -> float:
         )
         period /= FIT_REACH if shape.gamma else 1.0
         times = min(shape.end(1e-9 * shape.peak) * period / (2.0 * math.pi), float(MAX_TIMES))
-        total += 0.003 + 2e-8 * n**3 * mixed + times * seconds_a_time(n, mixed)
+        total += (
+            0.003
+            + 2e-8 * n**3 * mixed
+            + times * seconds_a_time(n, mixed=mixed, slopes=_has_slopes(transition))
+        )
     return len(groups) * total
 
 
-def seconds_a_time(n: int, mixed: bool) -> float:
-    """Seconds of one time point of n modes, all mixed or none."""
-    return 1e-6 + (3.5e-10 * n**3 + 1.2e-8 * n**2 if mixed else 6e-9 * n)
+def seconds_a_time(n: int, *, mixed: bool, slopes: bool) -> float:
+    """Seconds of one time point of n modes, all mixed or none, with a moment that varies or not."""
+    if mixed:
+        return 1e-6 + (7e-7 if slopes else 2.5e-7) * n + 1.2e-8 * n**2 + 3.5e-10 * n**3
+    return 1e-6 + (8e-8 if slopes else 6e-9) * n
+
+
+def _has_slopes(transition: Transition) -> bool:
+    return transition.moment is not None and bool(transition.moment.slopes_debye.any())
 
 
 def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...]) -> _Part:
@@ -279,9 +298,12 @@ def _part(question: BandsQuestion, species: Species, group: tuple[Species, ...])
 def _seconds_left(part: _Part) -> float:
     missing = max(0, part.sampling.count - part.kept.have(part.sampling.step))
     modes = part.kept.modes
-    each = sum(seconds_a_time(len(block), mixed=True) for block in modes.mixed)
+    each = sum(
+        seconds_a_time(len(block), mixed=True, slopes=block.has_slopes) for block in modes.mixed
+    )
     if modes.uncoupled is not None:
-        each += seconds_a_time(len(modes.uncoupled.g), mixed=False)
+        slopes = bool(modes.uncoupled.slopes.any())
+        each += seconds_a_time(len(modes.uncoupled.g), mixed=False, slopes=slopes)
     return missing * each + 3e-7 * part.sampling.count + 2e-7 * len(part.energies)
 
 
@@ -291,9 +313,7 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
     plain, total, bound = np.zeros((3, len(axis.values)))
     for part in parts:
         found = _density(part, deadline)
-        factors = part.share * scale_factors(
-            question.scale, process, axis.wavenumbers, axis.jacobian, part.kept.modes.total
-        )
+        factors = part.share * _factors(question, process, part.kept.modes.total)
         plain += part.share * found.value
         total += factors * found.value
         bound += factors * found.bound + 40.0 * UNIT_ROUNDOFF * np.abs(factors * found.value)
@@ -309,23 +329,31 @@ def _band(question: BandsQuestion, parts: list[_Part], deadline: Deadline) -> Ba
         tuple(_positions(part) for part in parts),
         _mixture_strength(question, process, parts),
         _range(parts),
-        tuple(_labels(question, part.species.transition, deadline) for part in parts)
-        if question.label_lines
-        else (),
+        _labels(question, parts, deadline) if question.label_lines else (),
     )
 
 
-def _labels(question: BandsQuestion, transition: Transition, deadline: Deadline) -> LineList:
-    """The strongest lines on the axis, as far as a short enumeration finds them."""
+def _labels(
+    question: BandsQuestion, parts: list[_Part], deadline: Deadline
+) -> tuple[LineList, ...]:
+    """The strongest lines on the axis, one list a species; none where a short look finds none."""
     wavenumbers = question.axis.wavenumbers
-    asked = LinesQuestion(
-        transition,
-        threshold=LABEL_THRESHOLD,
-        max_lines=question.label_lines,
-        low_cm1=float(wavenumbers.min()),
-        high_cm1=float(wavenumbers.max()),
-    )
-    return lines(asked, Limits(work_s=LABEL_SECONDS), deadline).lines
+    found = []
+    for part in parts:
+        asked = LinesQuestion(
+            part.species.transition,
+            threshold=LABEL_THRESHOLD,
+            max_lines=question.label_lines,
+            low_cm1=float(wavenumbers.min()),
+            high_cm1=float(wavenumbers.max()),
+        )
+        short = min(deadline, Deadline.after(LABEL_DEADLINE_S), key=lambda one: one.at)
+        try:
+            found.append(lines(asked, Limits(work_s=LABEL_SECONDS), short).lines)
+        except (CostLimitExceeded, DeadlineExceeded, DomainError, PrecisionNotReached):
+            deadline.check()
+            return ()
+    return tuple(found)
 
 
 def _density(part: _Part, deadline: Deadline) -> Density:
@@ -362,7 +390,7 @@ def _mixture_moments(question: BandsQuestion, parts: list[_Part]) -> BandMoments
     variance = float(weights @ (variances + off**2))
     third = float(weights @ (thirds + 3.0 * off * variances + off**3))
     deviation = math.sqrt(max(variance, 0.0))
-    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+    return BandMoments(mean, deviation, skewness(third, deviation))
 
 
 def _positions(part: _Part) -> Positions:
@@ -376,16 +404,21 @@ def _positions(part: _Part) -> Positions:
 
 def _moments_on_axis(wavenumbers: Floats, plain: Floats) -> BandMoments | None:
     """Trapezoidal moments of the density over the axis, in cm^-1."""
-    order = np.argsort(wavenumbers)
-    x, y = wavenumbers[order], plain[order]
-    area = float(np.trapezoid(y, x)) if len(x) > 1 else 0.0
+    steps = np.abs(np.diff(wavenumbers))
+    weights = np.zeros(len(plain))
+    weights[:-1] += 0.5 * steps
+    weights[1:] += 0.5 * steps
+    weights *= plain
+    area = float(weights.sum())
     if area <= 1e-9:
         return None
-    mean = float(np.trapezoid(y * x, x)) / area
-    variance = float(np.trapezoid(y * (x - mean) ** 2, x)) / area
-    third = float(np.trapezoid(y * (x - mean) ** 3, x)) / area
+    mean = float(weights @ wavenumbers) / area
+    off = wavenumbers - mean
+    square = off * off
+    variance = float(weights @ square) / area
+    third = float(weights @ (square * off)) / area
     deviation = math.sqrt(max(variance, 0.0))
-    return BandMoments(mean, deviation, third / deviation**3 if deviation > 0.0 else 0.0)
+    return BandMoments(mean, deviation, skewness(third, deviation))
 
 
 def _mixture_strength(question: BandsQuestion, process: Process, parts: list[_Part]) -> Strength:
@@ -441,6 +474,11 @@ def _warnings(question: BandsQuestion, found: tuple[Band, ...]) -> tuple[str, ..
                 f"The axis holds {100.0 * area:.3g} % of the {band.process} band's area; "
                 "the area is 1 over all wavenumbers."
             )
+    if question.label_lines and not all(band.lines for band in found):
+        notes.append(
+            "No labels: the band has too many lines for a short enumeration. POST /v1/lines gives "
+            "more time to it."
+        )
     if question.scale in ("molar_absorption_coefficient", "cross_section", "photon_rate") and any(
         species.transition.moment is None for species in question.species
     ):

@@ -54,9 +54,9 @@ class WavefunctionsAnswer:
 
 
 def estimate_seconds(question: WavefunctionsQuestion) -> float:
-    """Estimated seconds of work, without doing any."""
+    """Estimated seconds of work, without doing any: writing or drawing the numbers is most of it."""
     levels = question.v_initial_max + question.v_final_max + 2
-    return 2e-4 + 2e-8 * levels * question.points
+    return 2e-4 + 3e-7 * levels * question.points
 
 
 def wavefunctions(
@@ -77,6 +77,8 @@ def wavefunctions(
     (proven), plus what the rounding of the initial state's coordinate does (|phi'| <= sqrt(2v+2)
     pi^-1/4).
     """
+    levels = question.v_initial_max + question.v_final_max + 2
+    limits.admit_table(levels * question.points)
     limits.admit(estimate_seconds(question), "Ask for fewer points or levels.")
     deadline.check()
     mode = question.mode

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import logging
 import os
 import re
@@ -12,28 +13,19 @@ from typing import Any
 
 import orjson
 from flask import Blueprint, Flask, Response, current_app, g, request
-from prometheus_client import CollectorRegistry, Counter, Histogram, generate_latest
+from prometheus_client import CollectorRegistry, generate_latest
 from prometheus_client.multiprocess import MultiProcessCollector
 from prometheus_client.registry import REGISTRY
 
 from ladderband.jobs.database import StorageUnavailable
 from ladderband.jobs.submissions import overview
 from ladderband.web.desk import Desk
+from ladderband.web.ledger import Entry, Ledger
 
 REQUEST_ID = re.compile(r"[A-Za-z0-9._:/+=-]{1,80}")
+_WORKER = uuid.uuid4().hex[:12]
+_NUMBERS = itertools.count(1)
 METRICS_MEDIA_TYPE = "text/plain; version=0.0.4; charset=utf-8"
-
-_requests = Counter(
-    "ladderband_requests_total", "Requests answered.", ["method", "route", "status"]
-)
-_seconds = Histogram(
-    "ladderband_request_seconds",
-    "Time from the first byte read to the answer's first byte.",
-    ["route"],
-    buckets=(0.001, 0.003, 0.01, 0.03, 0.1, 0.3, 1.0, 3.0, 10.0),
-)
-_children: dict[tuple[str, str, int], tuple[Any, Any]] = {}
-"""Label lookups cost as much as the counting itself; there are few routes and statuses."""
 
 blueprint = Blueprint("operations", __name__)
 
@@ -67,54 +59,36 @@ def configure_logging() -> None:
 def install(app: Flask, log_requests: bool) -> None:
     """Count, time and log every request of the app."""
     configure_logging()
+    ledger = Ledger(log_requests)
+    app.config["LEDGER"] = ledger
     app.register_blueprint(blueprint)
     app.before_request(_begin)
 
     @app.after_request
     def finish(response: Response) -> Response:
-        response.headers["X-Request-ID"] = g.request_id
-        elapsed = time.perf_counter() - g.began
-        _count(response.status_code, elapsed)
-        if log_requests:
-            _log_line(response, elapsed)
+        response.headers.add("X-Request-ID", g.request_id)
+        ledger.add(_entry(response))
         return response
 
 
 def _begin() -> None:
     g.began = time.perf_counter()
     given = request.environ.get("HTTP_X_REQUEST_ID", "")
-    g.request_id = given if REQUEST_ID.fullmatch(given) else uuid.uuid4().hex
+    g.request_id = given if REQUEST_ID.fullmatch(given) else f"{_WORKER}-{next(_NUMBERS)}"
 
 
-def _route() -> str:
-    return request.url_rule.rule if request.url_rule is not None else "none"
-
-
-def _count(status: int, elapsed: float) -> None:
-    key = (request.method if request.url_rule else "none", _route(), status)
-    child = _children.get(key)
-    if child is None:
-        child = _requests.labels(key[0], key[1], str(status)), _seconds.labels(key[1])
-        _children[key] = child
-    child[0].inc()
-    child[1].observe(elapsed)
-
-
-def _log_line(response: Response, elapsed: float) -> None:
-    line = {
-        "time": time.time(),
-        "level": "info",
-        "event": "request",
-        "request_id": g.request_id,
-        "method": request.method,
-        "route": _route(),
-        "status": response.status_code,
-        "ms": round(1e3 * elapsed, 3),
-        "problem": g.get("problem"),
-        "digest": g.get("digest"),
-    }
-    # one write of one line: whole lines even with many threads
-    os.write(2, orjson.dumps(line, option=orjson.OPT_APPEND_NEWLINE))
+def _entry(response: Response) -> Entry:
+    rule = request.url_rule
+    return Entry(
+        time=time.time(),
+        request_id=g.request_id,
+        method=request.method if rule is not None else "none",  # any word can be sent as a method
+        route=rule.rule if rule is not None else "none",
+        status=response.status_code,
+        elapsed_s=time.perf_counter() - g.began,
+        problem=g.get("problem"),
+        digest=g.get("digest"),
+    )
 
 
 @blueprint.get("/healthz")
@@ -149,6 +123,7 @@ def _records_state(desk: Desk) -> dict[str, Any]:
 @blueprint.get("/metrics")
 def metrics() -> Response:
     """Counters of all workers in the Prometheus text format."""
+    current_app.config["LEDGER"].flush()
     registry = REGISTRY
     if "PROMETHEUS_MULTIPROC_DIR" in os.environ:
         registry = CollectorRegistry()

@@ -167,11 +167,13 @@ def _not_modified(tag: str) -> Response:
 
 
 def _response(body: Body, name: str, tag: str) -> Response:
-    response = Response(body, content_type=MEDIA_TYPES[name])
-    response.headers["ETag"] = f'"{tag}"'
-    response.headers["Vary"] = "Accept"
-    response.headers["Cache-Control"] = "private, max-age=0, must-revalidate"
-    return response
+    headers = [
+        ("Content-Type", MEDIA_TYPES[name]),
+        ("ETag", f'"{tag}"'),
+        ("Vary", "Accept"),
+        ("Cache-Control", "private, max-age=0, must-revalidate"),
+    ]
+    return Response(body, headers=headers)
 
 
 def blueprint_of(resource: Resource[Any, Any]) -> Blueprint:
