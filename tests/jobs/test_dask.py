@@ -130,8 +130,11 @@ def disturbed(cluster: Cluster, victim: str) -> None:
         return
     cluster.scheduler.kill()
     cluster.scheduler.wait()
-    time.sleep(0.3)
+    for worker in cluster.workers:  # they end themselves without a scheduler; this is sooner
+        worker.kill()
+        worker.wait()
     cluster.scheduler = cluster.start_scheduler()
+    cluster.workers = [cluster.start_worker() for _ in range(2)]
 
 
 @pytest.mark.timeout(900)
