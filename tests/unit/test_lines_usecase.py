@@ -146,3 +146,19 @@ def test_a_moment_couples_all_modes_and_stays_normalised() -> None:
     false_origin = answer.lines.v_final.sum(axis=1) + answer.lines.v_initial.sum(axis=1) == 0
     assert answer.lines.intensity[false_origin].sum() < 1e-15  # the 0-0 line is forbidden
     assert math.isclose(answer.lines.completeness.total, 1.0)
+
+
+@pytest.mark.parametrize("threshold", [0.0, 1e-300])
+def test_a_vanishing_threshold_is_the_best_list_there_is(threshold: float) -> None:
+    answer = ask(PAIR, threshold=threshold)
+    assert answer.enumerated.missing_at_most < 1e-10
+
+
+def test_a_hardly_vibrating_hot_mode_is_answered_or_refused_in_words() -> None:
+    modes = (Mode(1e-3, 1e-3, 0.1), Mode(500.0, 450.0, 0.3))
+    mixing = np.array([[0.8, 0.6], [-0.6, 0.8]])
+    try:
+        answer = ask(Transition(modes, mixing=mixing, temperature_k=1e5))
+        assert answer.lines.completeness.missing_at_most <= 1.0
+    except (CostLimitExceeded, DomainError) as error:
+        assert len(str(error)) > 20

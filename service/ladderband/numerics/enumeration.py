@@ -108,11 +108,9 @@ def coupled_problem(transition: Transition, tolerance: float) -> CoupledProblem:
     for k, mode in enumerate(transition.modes):
         x = boltzmann_exponent(mode.wavenumber_initial_cm1, transition.temperature_k)
         if math.exp(-x) * count > 1e-3 * tolerance:
-            length = int(math.log(1e-3 * tolerance / count) / -x) + 2
+            length = int(min(2000.0, -math.log(1e-3 * tolerance / count) / x)) + 2
             distributions.append(
-                thermal_populations(
-                    mode.wavenumber_initial_cm1, transition.temperature_k, min(2000, length)
-                )
+                thermal_populations(mode.wavenumber_initial_cm1, transition.temperature_k, length)
             )
             modes.append(k)
     for k, gaussian in enumerate(gaussian_modes(transition)):

@@ -89,7 +89,7 @@ def thermal_quanta(wavenumber_cm1: float, temperature_k: float, tolerance: float
     x = boltzmann_exponent(wavenumber_cm1, temperature_k)
     if math.isinf(x):
         return 0
-    return min(QUANTA_MAX, max(0, math.ceil(-math.log(tolerance) / x) - 1))
+    return math.ceil(min(QUANTA_MAX + 1.0, max(1.0, -math.log(tolerance) / x))) - 1
 
 
 def final_quanta(mode: Mode, v_max: int) -> int:

@@ -22,6 +22,9 @@ from ladderband.numerics.transition import Floats, Transition
 from ladderband.usecases.limits import CostLimitExceeded, Limits
 
 DEFAULT_TOLERANCE = 1e-2
+SMALLEST_TOLERANCE = 1e-12
+"""What is missing can be proved down to the rounding of the sums, about this."""
+
 SECONDS_PER_AMPLITUDE = 3e-7
 """Enumeration, bounds, sorting and quanta together, measured on one core."""
 
@@ -158,7 +161,7 @@ def _enumerated(question: LinesQuestion, limit: int, deadline: Deadline) -> Enum
     found = transition_lines(question.transition, tolerance, selection, limit, deadline)
     if question.threshold is None or question.tolerance is not None:
         return found
-    wanted = question.threshold * found.strongest
+    wanted = max(SMALLEST_TOLERANCE, question.threshold * found.strongest)
     if found.enumerated.missing_at_most <= wanted or found.count >= limit:
         return found
     return transition_lines(question.transition, wanted, selection, limit, deadline)

@@ -76,10 +76,6 @@ class JobsOff(WebError):
     """The application has no job records."""
 
 
-class Busy(WebError):
-    """All places for dear requests are taken."""
-
-
 class JobFailed(Exception):
     """The job a request waited for failed; ``problem`` is the document it failed with."""
 
@@ -221,10 +217,6 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "jobs-off", 503, "This process keeps no jobs",
         "The application was started without job records; ladderband serve has them.",
     ),
-    Busy: Problem(
-        "busy", 503, "All places for calculations are taken",
-        "Try again after the seconds in Retry-After.", _web,
-    ),
 }  # fmt: skip
 
 HTTP_PROBLEMS: dict[int, Problem] = {
@@ -250,7 +242,9 @@ HTTP_PROBLEMS: dict[int, Problem] = {
         "internal", 500, "The service failed",
         "A fault of the service. Report the instance id; the log holds the rest.",
     ),
-    503: PROBLEMS[Busy],
+    503: Problem(
+        "unavailable", 503, "The service cannot answer now", "Try again after Retry-After seconds."
+    ),
 }  # fmt: skip
 
 
