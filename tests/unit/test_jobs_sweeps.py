@@ -149,8 +149,9 @@ def test_unequal_lists_in_step_are_refused() -> None:
         ("/flat\n", "at least a row"),
         ("/flat,/temperature_k\n1\n", "Row 2 has 1 cells"),
         ("flat\n1\n", "starts with '/'"),
+        ('/flat\n"' + "x" * 200_000, "not CSV"),
     ],
-    ids=["no rows", "short row", "no pointer"],
+    ids=["no rows", "short row", "no pointer", "a cell beyond all measure"],
 )
 def test_a_broken_table_is_refused(table: str, message: str) -> None:
     with pytest.raises(SweepError, match=message):

@@ -139,7 +139,10 @@ def _axis_values(entry: Document, where: str) -> Sequence[Any] | Range:
 
 def _table_axes(text: str) -> Iterator[Axis]:
     """The columns of a CSV table whose header row holds the pointers."""
-    rows = [row for row in csv.reader(io.StringIO(text)) if row]
+    try:
+        rows = [row for row in csv.reader(io.StringIO(text, newline="")) if row]
+    except csv.Error as error:
+        raise SweepError("/table_csv", f"This is not CSV: {error}.") from error
     if len(rows) < 2:
         raise SweepError(
             "/table_csv", "The table needs a header row of pointers and at least a row."
