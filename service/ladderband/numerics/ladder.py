@@ -97,25 +97,39 @@ def pair_coefficients(pairs: OscillatorColumns) -> PairCoefficients:
     and sqrt t more: 14.5; w_yz 1.5 + 3 + 1. The exponent Delta^2 g/(g+f)/2: 13 + 3 + 2 = 18, which the
     exponential turns into 18 times its size.
     """
-    difference, share, t = _ratios(pairs)
+    ratios = _ratios(pairs)
     delta = pairs.displacements()
-    root_t = np.sqrt(t)
-    w_yz = 2.0 * root_t * share
-    w_z = np.sqrt(2.0) * delta * share
-    exponent = 0.5 * delta**2 * share
-    with np.errstate(under="ignore"):
-        c = np.sqrt(w_yz) * np.exp(-exponent)
+    w_yy, w_yz, w_y, w_z, c, c_error, scale = _coefficients(*ratios, delta)
     return PairCoefficients(
-        w_yy=difference,
+        w_yy=w_yy,
         w_yz=w_yz,
-        w_y=-w_z * root_t,
+        w_y=w_y,
         w_z=w_z,
         c=c,
-        c_error=(20.0 * exponent + 16.0) * UNIT_ROUNDOFF,
-        scale=1.0 / root_t,
+        c_error=c_error,
+        scale=scale,
         displacement=delta,
         displacement_error=DISPLACEMENT_ROUNDINGS[pairs.shift_kind] * UNIT_ROUNDOFF,
     )
+
+
+@njit(cache=True, nogil=True)
+def _coefficients(difference, share, t, delta):  # type: ignore[no-untyped-def]
+    """Rows w_yy, w_yz, w_y, w_z, c, c_error, scale of all pairs, one operation after the other."""
+    out = np.empty((7, len(delta)))
+    for b in range(len(delta)):
+        root_t = np.sqrt(t[b])
+        w_yz = 2.0 * root_t * share[b]
+        w_z = np.sqrt(2.0) * delta[b] * share[b]
+        exponent = 0.5 * delta[b] * delta[b] * share[b]
+        out[0, b] = difference[b]
+        out[1, b] = w_yz
+        out[2, b] = -w_z * root_t
+        out[3, b] = w_z
+        out[4, b] = np.sqrt(w_yz) * np.exp(-exponent)
+        out[5, b] = (20.0 * exponent + 16.0) * UNIT_ROUNDOFF
+        out[6, b] = 1.0 / root_t
+    return out
 
 
 @njit(cache=True, nogil=True)

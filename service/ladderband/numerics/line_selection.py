@@ -62,12 +62,24 @@ def uncoupled_lines(
     max_lines: int,
     deadline: Deadline,
 ) -> LineList:
-    """Joint lines of uncoupled modes, one list of sticks each: at least ``threshold`` of the strongest."""
+    """Joint lines of uncoupled modes, one list of sticks each: at least ``threshold`` of the strongest.
+
+    Rising position first.
+    """
     parts = [_of_sticks(mode) for mode in sticks]
     joint = _products(parts, threshold, deadline)
+    kept = _strongest(joint.intensity, max_lines)
     blocks = [BlockIndices((k,), (k,)) for k in range(len(sticks))]
-    selection = Selection(max_lines=max_lines)
-    return _selected(transition, blocks, parts, joint, selection, _sum_error(parts))
+    v, n = _quanta(transition, blocks, parts, joint.places[kept])
+    position = positions(transition, v, n)
+    order = np.lexsort((-joint.intensity[kept], position))
+    return _line_list(parts, joint, kept[order], (position[order], v[order], n[order]))
+
+
+def _strongest(intensity: Floats, count: int) -> Places:
+    if len(intensity) <= count:
+        return np.arange(len(intensity))
+    return np.argpartition(-intensity, count - 1)[:count]
 
 
 def _of_sticks(sticks: ModeSticks) -> BlockLines:
@@ -119,10 +131,9 @@ def transition_lines(
     share = tolerance / (2.0 * len(blocks)) if len(blocks) > 1 else tolerance
     parts = [block_lines(transition, block, share, limit, deadline) for block in blocks]
     joint = _joint(parts, tolerance, limit, deadline)
-    error = _sum_error(parts)
     return EnumeratedLines(
-        _selected(transition, blocks, parts, joint, selection, error),
-        _completeness(joint.intensity, error),
+        _selected(transition, blocks, parts, joint, selection),
+        _completeness(joint.intensity, _sum_error(parts)),
         len(joint.intensity),
         float(joint.intensity.max(initial=0.0)),
     )
@@ -190,6 +201,12 @@ def _products(parts: list[BlockLines], least: float, deadline: Deadline) -> _Joi
     Everything is compared relative to the strongest line of each block, so a partial product below
     ``least`` can never recover and is dropped, and nothing underflows.
     """
+    if len(parts) == 1:
+        only = parts[0]
+        smallest = max(least * float(only.intensity.max(initial=0.0)), 5e-324)
+        (strong,) = np.nonzero(only.intensity >= smallest)
+        place = strong.astype(np.int32)[:, None]
+        return _Joint(only.intensity[strong], only.bound[strong], place)
     size = 1
     intensity, bound, relative = np.ones(1), np.zeros(1), np.ones(1)
     places = np.empty((1, 0), np.int32)
@@ -219,7 +236,6 @@ def _selected(
     parts: list[BlockLines],
     joint: _Joint,
     selection: Selection,
-    error: float,
 ) -> LineList:
     """The strongest lines inside the selection, strongest first."""
     strong = np.flatnonzero(
@@ -227,12 +243,20 @@ def _selected(
     )
     order = strong[np.argsort(-joint.intensity[strong], kind="stable")]
     chosen, v, n, position = _inside(transition, blocks, parts, joint, order, selection)
+    return _line_list(parts, joint, chosen, (position, v, n))
+
+
+def _line_list(
+    parts: list[BlockLines], joint: _Joint, chosen: Places, columns: tuple[Floats, Quanta, Quanta]
+) -> LineList:
+    position, v, n = columns
+    intensity = joint.intensity[chosen]
     return LineList(
         position_cm1=position,
-        intensity=joint.intensity[chosen],
+        intensity=intensity,
         v_initial=v,
         v_final=n,
-        completeness=_completeness(joint.intensity[chosen], error),
+        completeness=_completeness(intensity, _sum_error(parts)),
         accuracy=Accuracy(
             float(joint.bound[chosen].max(initial=0.0)),
             "proven",

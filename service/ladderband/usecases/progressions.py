@@ -57,7 +57,7 @@ def progressions(question: ProgressionsQuestion, limits: Limits, deadline: Deadl
     found = uncoupled_lines(
         question.transition, sticks, question.threshold, question.max_lines, deadline
     )
-    return replace(found.by_position(), warnings=_warnings(question, sticks))
+    return replace(found, warnings=_warnings(question, sticks))
 
 
 def _check_uncoupled(transition: Transition) -> None:
