@@ -45,6 +45,28 @@ class Settings:
     work_s: float = _setting(1.0, "s", "Largest estimated work of one request.", 0.0)
     deadline_s: float = _setting(10.0, "s", "A calculation is stopped after this time.", 0.0)
     table_elements: int = _setting(4_100_000, "numbers", "Most numbers in one table answer.", 1)
+    engine: str = _setting(
+        "local", "", "Where jobs run: local, or a Dask scheduler (tcp://host:8786)."
+    )
+    engine_processes: int = _setting(
+        0, "processes", "Compute processes of the local engine; 0: one for each processor.", 0
+    )
+    database_url: str = _setting(
+        "", "", "Job records: sqlite:///FILE or postgresql://...; empty: a file in data_dir."
+    )
+    small_s: float = _setting(
+        0.2, "s", "Requests of more estimated work than this run in a compute process.", 0.0
+    )
+    wait_s: float = _setting(
+        10.0, "s", "How long such a request is waited for before it becomes a job.", 0.0
+    )
+    job_work_s: float = _setting(600.0, "s", "Largest work of a job, or of a sweep's point.", 0.0)
+    job_memory_bytes: int = _setting(
+        4_294_967_296, "bytes", "Memory one compute process may use.", 268_435_456
+    )
+    keep_results_days: float = _setting(7.0, "days", "How long results of jobs are kept.", 0.0)
+    queue_limit: int = _setting(10_000, "jobs", "Most unfinished jobs of one key.", 1)
+    sweep_points: int = _setting(1_000_000, "points", "Most points of a sweep.", 1)
     cors_origins: str = _setting(
         "", "", "Web origins whose pages may call the service, comma-separated, or *."
     )
@@ -58,6 +80,11 @@ class Settings:
         if self.data_dir:
             return Path(self.data_dir).expanduser().resolve()
         return Path("~/.local/share/ladderband").expanduser()
+
+    @property
+    def records_url(self) -> str:
+        """Where the job records are."""
+        return self.database_url or f"sqlite:///{self.data_path / 'jobs.db'}"
 
     @property
     def origins(self) -> frozenset[str]:

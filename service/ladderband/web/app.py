@@ -8,23 +8,32 @@ from flask import Flask, Response, request
 
 from ladderband.settings import Settings, load_settings
 from ladderband.usecases.limits import Limits
-from ladderband.web import bands_guide, operations, pages, problems
+from ladderband.web import bands_guide, jobs, operations, pages, problems, sweeps
+from ladderband.web.desk import Desk
+from ladderband.web.desk import install as install_desk
 from ladderband.web.resource import blueprint_of
 from ladderband.web.resources import RESOURCES
 
 
-def create_app(settings: Settings | None = None) -> Flask:
-    """A ready application; ``READY`` in its config is an event that /readyz looks at."""
+def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Flask:
+    """A ready application; ``READY`` in its config is an event that /readyz looks at.
+
+    Without a ``desk`` every request is answered in this process and jobs are refused.
+    """
     settings = load_settings() if settings is None else settings
     app = Flask("ladderband", static_folder=None)
     app.config["SETTINGS"] = settings
     app.config["LIMITS"] = Limits(work_s=settings.work_s, table_elements=settings.table_elements)
     app.config["READY"] = threading.Event()
     app.config["READY"].set()
+    app.config["DESK"] = desk
     problems.install(app)
     operations.install(app, settings.log_requests)
+    install_desk(app)
     app.register_blueprint(pages.blueprint)
     app.register_blueprint(bands_guide.blueprint)
+    app.register_blueprint(jobs.blueprint)
+    app.register_blueprint(sweeps.blueprint)
     for resource in RESOURCES:
         app.register_blueprint(blueprint_of(resource))
     if settings.origins:
@@ -41,11 +50,14 @@ def _allow_origins(app: Flask, origins: frozenset[str]) -> None:
             return response
         response.headers["Access-Control-Allow-Origin"] = "*" if "*" in origins else origin
         response.headers["Access-Control-Expose-Headers"] = (
-            "ETag, X-Request-ID, Retry-After, Location"
+            "ETag, X-Request-ID, Retry-After, Location, Content-Range"
         )
         if request.method == "OPTIONS":
             response.headers["Access-Control-Allow-Methods"] = response.headers.get("Allow", "")
-            allowed = "Content-Type, Authorization, If-None-Match, Prefer, X-Request-ID"
+            allowed = (
+                "Content-Type, Authorization, If-None-Match, Prefer, X-Request-ID, Idempotency-Key, "
+                "Last-Event-ID, Range"
+            )
             response.headers["Access-Control-Allow-Headers"] = allowed
             response.headers["Access-Control-Max-Age"] = "3600"
         return response

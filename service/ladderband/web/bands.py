@@ -6,7 +6,7 @@ from ladderband.formats.bands import band_plot, bands_csv, bands_npy
 from ladderband.formats.jcamp import bands_jcamp
 from ladderband.formats.look import png, svg
 from ladderband.schemas.bands import BandsRequest, BandsResponse, bands_members
-from ladderband.usecases.bands import BandsAnswer, BandsQuestion, bands
+from ladderband.usecases.bands import BandsAnswer, BandsQuestion, bands, estimate_seconds
 from ladderband.web.resource import Resource
 
 DYE = {
@@ -126,6 +126,7 @@ BANDS: Resource[BandsQuestion, BandsAnswer] = Resource(
     request=BandsRequest(),
     response=BandsResponse,
     use_case=bands,
+    estimate=estimate_seconds,
     members=bands_members,
     formats={
         "csv": bands_csv,

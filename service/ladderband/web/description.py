@@ -12,6 +12,7 @@ from apispec.ext.marshmallow import MarshmallowPlugin
 from ladderband import __version__
 from ladderband.schemas.base import NUMBER, StrictSchema
 from ladderband.schemas.query import VIEW_HELP, QuerySchema, ViewQuery
+from ladderband.web.jobs_description import ACCEPTED, ASYNC_PARAMETERS, job_operations
 from ladderband.web.negotiation import MEDIA_TYPES
 from ladderband.web.problems import MEDIA_TYPE as PROBLEM_TYPE
 from ladderband.web.problems import all_problems
@@ -54,6 +55,8 @@ def description() -> dict[str, Any]:
         spec.path(path=resource.path, operations=operations)
     for path, operation in _operations().items():
         spec.path(path=path, operations={"get": operation})
+    for path, operations in job_operations().items():
+        spec.path(path=path, operations=operations)
     document: dict[str, Any] = spec.to_dict()
     _state_choices(document)
     return document
@@ -158,13 +161,14 @@ def _post(resource: Resource[Any, Any]) -> dict[str, Any]:
     body = {"schema": type(resource.request), "examples": examples}
     return {
         **_common(resource, resource.operation_id),
-        "parameters": _parameters(ViewQuery(), resource),
+        "parameters": _parameters(ViewQuery(), resource) + ASYNC_PARAMETERS,
         "requestBody": {"required": True, "content": {"application/json": body}},
     }
 
 
 def _get(resource: Resource[Any, Any], short_form: QuerySchema) -> dict[str, Any]:
     parameters = _parameters(short_form, resource) + _parameters(ViewQuery(), resource)
+    parameters += ASYNC_PARAMETERS
     return {**_common(resource, resource.operation_id + "ByQuery"), "parameters": parameters}
 
 
@@ -182,6 +186,7 @@ def _common(resource: Resource[Any, Any], operation_id: str) -> dict[str, Any]:
         "description": resource.description,
         "responses": {
             "200": {"description": "The answer.", "headers": headers, "content": content},
+            "202": ACCEPTED,
             "default": "Problem",
         },
     }

@@ -6,7 +6,7 @@ from ladderband.formats.line_list import line_list_csv, line_list_ndjson, line_l
 from ladderband.formats.look import png, svg
 from ladderband.formats.plots import stick_plot
 from ladderband.schemas.lines import LinesRequest, LinesResponse, lines_members
-from ladderband.usecases.lines import LinesAnswer, LinesQuestion, lines
+from ladderband.usecases.lines import LinesAnswer, LinesQuestion, estimate_seconds, lines
 from ladderband.web.resource import Resource
 
 _RING = {
@@ -39,6 +39,7 @@ LINES: Resource[LinesQuestion, LinesAnswer] = Resource(
     request=LinesRequest(),
     response=LinesResponse,
     use_case=lines,
+    estimate=estimate_seconds,
     members=lines_members,
     formats={
         "csv": lambda sheet, question, answer: line_list_csv(sheet, question, answer.lines),

@@ -13,7 +13,12 @@ from ladderband.schemas.mode_map_answers import (
     mode_maps_members,
 )
 from ladderband.schemas.mode_maps import ModeMapsRequest
-from ladderband.usecases.mode_maps import ModeMapsAnswer, ModeMapsQuestion, mode_maps
+from ladderband.usecases.mode_maps import (
+    ModeMapsAnswer,
+    ModeMapsQuestion,
+    estimate_seconds,
+    mode_maps,
+)
 from ladderband.web.resource import Resource
 
 
@@ -65,6 +70,7 @@ MODE_MAPS: Resource[ModeMapsQuestion, ModeMapsAnswer] = Resource(
     request=ModeMapsRequest(),
     response=ModeMapsResponse,
     use_case=mode_maps,
+    estimate=estimate_seconds,
     members=mode_maps_members,
     formats={"csv": _csv},
     examples={

@@ -16,6 +16,8 @@ MEDIA_TYPES: dict[str, str] = {
     "svg": "image/svg+xml",
     "png": "image/png",
     "jcamp": "chemical/x-jcamp-dx",
+    "arrow": "application/vnd.apache.arrow.file",
+    "parquet": "application/vnd.apache.parquet",
 }
 """Name for ``?format=`` and media type of every format of the service."""
 

@@ -9,6 +9,7 @@ import re
 import sys
 import time
 import uuid
+from typing import Any
 
 import orjson
 from flask import Blueprint, Flask, Response, current_app, g, request
@@ -16,6 +17,9 @@ from prometheus_client import CollectorRegistry, generate_latest
 from prometheus_client.multiprocess import MultiProcessCollector
 from prometheus_client.registry import REGISTRY
 
+from ladderband.jobs.database import StorageUnavailable
+from ladderband.jobs.submissions import overview
+from ladderband.web.desk import Desk
 from ladderband.web.ledger import Entry, Ledger
 
 REQUEST_ID = re.compile(r"[A-Za-z0-9._:/+=-]{1,80}")
@@ -97,8 +101,23 @@ def healthz() -> Response:
 def readyz() -> Response:
     """Warmed up and willing to work; 503 otherwise."""
     ready = current_app.config["READY"].is_set()
-    body = b'{"status":"ready"}' if ready else b'{"status":"starting"}'
-    return Response(body, status=200 if ready else 503, content_type="application/json")
+    desk: Desk | None = current_app.config["DESK"]
+    members: dict[str, Any] = {"status": "ready" if ready else "starting"}
+    if ready and desk is not None:
+        members |= _records_state(desk)
+        ready = members["status"] == "ready"
+    return Response(
+        orjson.dumps(members), status=200 if ready else 503, content_type="application/json"
+    )
+
+
+def _records_state(desk: Desk) -> dict[str, Any]:
+    try:
+        if not desk.database.is_current():
+            return {"status": "the job records wait for their migration"}
+        return {"status": "ready", "engines": overview(desk.database).engines}
+    except StorageUnavailable:
+        return {"status": "the job records cannot be reached"}
 
 
 @blueprint.get("/metrics")
@@ -109,4 +128,22 @@ def metrics() -> Response:
     if "PROMETHEUS_MULTIPROC_DIR" in os.environ:
         registry = CollectorRegistry()
         MultiProcessCollector(registry)  # type: ignore[no-untyped-call]
-    return Response(generate_latest(registry), content_type=METRICS_MEDIA_TYPE)
+    text = generate_latest(registry) + _job_gauges(current_app.config["DESK"])
+    return Response(text, content_type=METRICS_MEDIA_TYPE)
+
+
+def _job_gauges(desk: Desk | None) -> bytes:
+    """Unfinished jobs and living engines, from the records at this moment."""
+    if desk is None:
+        return b""
+    try:
+        found = overview(desk.database)
+    except StorageUnavailable:
+        return b""
+    return (
+        "# HELP ladderband_jobs Unfinished jobs.\n# TYPE ladderband_jobs gauge\n"
+        f'ladderband_jobs{{state="queued"}} {found.queued}\n'
+        f'ladderband_jobs{{state="running"}} {found.running}\n'
+        "# HELP ladderband_engines Engines alive.\n# TYPE ladderband_engines gauge\n"
+        f"ladderband_engines {found.engines}\n"
+    ).encode()

@@ -16,7 +16,12 @@ from ladderband.formats.plots import overlap_plot
 from ladderband.formats.sheet import Sheet
 from ladderband.schemas.fields import Complaint
 from ladderband.schemas.overlaps import OverlapsRequest, OverlapsResponse, overlaps_members
-from ladderband.usecases.overlaps import OverlapsAnswer, OverlapsQuestion, overlaps
+from ladderband.usecases.overlaps import (
+    OverlapsAnswer,
+    OverlapsQuestion,
+    estimate_seconds,
+    overlaps,
+)
 from ladderband.web.resource import Resource
 
 ARRAYS = ("overlap_integrals", "franck_condon_factors", "matrix_elements")
@@ -90,6 +95,7 @@ OVERLAPS: Resource[OverlapsQuestion, OverlapsAnswer] = Resource(
     request=OverlapsRequest(),
     response=OverlapsResponse,
     use_case=overlaps,
+    estimate=estimate_seconds,
     members=overlaps_members,
     formats={
         "csv": _csv,

@@ -20,6 +20,16 @@ from flask import Flask, Response, g
 from marshmallow import ValidationError
 from werkzeug.exceptions import HTTPException
 
+from ladderband.jobs.database import StorageUnavailable
+from ladderband.jobs.errors import (
+    JobFinished,
+    JobNotFound,
+    QueueFull,
+    ResultGone,
+    ResultNotReady,
+    SweepError,
+    TokenMismatch,
+)
 from ladderband.numerics.errors import DeadlineExceeded, DomainError, PrecisionNotReached
 from ladderband.schemas.base import complaints
 from ladderband.usecases.limits import AnswerTooLarge, CostLimitExceeded
@@ -56,6 +66,22 @@ class NotAcceptable(WebError):
 
 class AlreadyHeld(WebError):
     """If-None-Match names the answer, and the method is not GET."""
+
+
+class Unauthorized(WebError):
+    """No valid key came with the request."""
+
+
+class JobsOff(WebError):
+    """The application has no job records."""
+
+
+class JobFailed(Exception):
+    """The job a request waited for failed; ``problem`` is the document it failed with."""
+
+    def __init__(self, problem: Mapping[str, Any]) -> None:
+        super().__init__(problem["detail"])
+        self.problem = problem
 
 
 @dataclass(frozen=True, slots=True)
@@ -147,6 +173,50 @@ PROBLEMS: dict[type[Exception], Problem] = {
         "deadline", 503, "The calculation was stopped at its time limit",
         "The work took longer than it was estimated to. Nothing was kept.",
     ),
+    Unauthorized: Problem(
+        "unauthorized", 401, "A valid key is needed",
+        "Send Authorization: Bearer KEY; the operator makes keys with ladderband keys add.",
+    ),
+    JobNotFound: Problem(
+        "job-not-found", 404, "There is no such job",
+        "The job never was, belongs to another key, or was forgotten long after its end.",
+    ),
+    JobFinished: Problem(
+        "job-finished", 409, "The job has ended", "A job that has ended cannot be cancelled.",
+        lambda error: {"state": error.state},
+    ),
+    ResultNotReady: Problem(
+        "result-not-ready", 409, "The job has no result",
+        "It is not finished yet, or ended without one; state tells which.",
+        lambda error: {"state": error.state},
+    ),
+    ResultGone: Problem(
+        "result-gone", 410, "The result was removed",
+        "Results are kept for a time the operator sets. Send the request again.",
+    ),
+    SweepError: Problem(
+        "sweep", 422, "The sweep does not fit its request",
+        "A pointer leads nowhere, a list has the wrong length, or there are too many points.",
+        lambda error: {"errors": [_error(error.pointer, str(error), None, None)]},
+    ),
+    TokenMismatch: Problem(
+        "idempotency-mismatch", 422, "The Idempotency-Key was used for another request",
+        "One Idempotency-Key stands for one request.",
+    ),
+    QueueFull: Problem(
+        "queue-full", 429, "Too many unfinished jobs",
+        "The key has as many unfinished jobs as it may have.",
+        lambda error: {"limit": error.limit, "retry_after_s": 5},
+    ),
+    StorageUnavailable: Problem(
+        "storage-unavailable", 503, "The job records are not available",
+        "The database cannot be reached or is full. Nothing was lost or changed.",
+        lambda error: {"retry_after_s": 5},
+    ),
+    JobsOff: Problem(
+        "jobs-off", 503, "This process keeps no jobs",
+        "The application was started without job records; ladderband serve has them.",
+    ),
 }  # fmt: skip
 
 HTTP_PROBLEMS: dict[int, Problem] = {
@@ -161,6 +231,9 @@ HTTP_PROBLEMS: dict[int, Problem] = {
         "The request line has more than 8190 bytes. Send the question as the body of a POST.",
     ),
     415: PROBLEMS[UnsupportedMediaType],
+    416: Problem(
+        "range-not-satisfiable", 416, "The result has no such bytes", "Content-Range has its length."
+    ),
     429: Problem("too-many-requests", 429, "Too many requests", "Wait as Retry-After says."),
     431: Problem(
         "headers-too-large", 431, "The header fields are too large", "Send fewer or shorter."
@@ -175,9 +248,23 @@ HTTP_PROBLEMS: dict[int, Problem] = {
 }  # fmt: skip
 
 
+JOB_PROBLEMS = (
+    Problem(
+        "memory-limit", 422, "Out of memory",
+        "The computation needed more memory than one may use. Ask for less.",
+    ),
+    Problem(
+        "compute-crashed", 500, "The computation crashed",
+        "The compute process died three times under the same part of the request.",
+    ),
+)  # fmt: skip
+"""What a job can end with besides; written by the engines, which do not know the web."""
+
+
 def all_problems() -> Iterator[Problem]:
     """Every problem, once each, by status."""
-    unique = {p.slug: p for p in (*PROBLEMS.values(), *HTTP_PROBLEMS.values())}
+    every = (*PROBLEMS.values(), *HTTP_PROBLEMS.values(), *JOB_PROBLEMS)
+    unique = {p.slug: p for p in every}
     yield from sorted(unique.values(), key=lambda problem: (problem.status, problem.slug))
 
 
@@ -197,11 +284,32 @@ def document(
 ) -> Response:
     """The problem document as a response."""
     g.problem = problem.slug
-    members = {**members_of(problem, detail, f"urn:uuid:{uuid.uuid4()}"), **(extras or {})}
-    response = Response(orjson.dumps(members), status=problem.status, content_type=MEDIA_TYPE)
-    if problem.status == 503:
-        response.headers["Retry-After"] = str((extras or {}).get("retry_after_s", 1))
+    return response_of(_document_members(problem, detail, extras))
+
+
+def response_of(members: Mapping[str, Any]) -> Response:
+    """A complete problem document as a response, with the headers its status asks for."""
+    status = members["status"]
+    response = Response(orjson.dumps(members), status=status, content_type=MEDIA_TYPE)
+    if status in (429, 503):
+        response.headers["Retry-After"] = str(members.get("retry_after_s", 1))
+    if status == 401:
+        response.headers["WWW-Authenticate"] = "Bearer"
     return response
+
+
+def document_of(error: Exception) -> dict[str, Any] | None:
+    """The problem document of an error that has a row here; None for any other."""
+    problem = next((PROBLEMS[kind] for kind in type(error).__mro__ if kind in PROBLEMS), None)
+    if problem is None:
+        return None
+    return _document_members(problem, str(error), problem.extras(error))
+
+
+def _document_members(
+    problem: Problem, detail: str | None, extras: Mapping[str, Any] | None
+) -> dict[str, Any]:
+    return {**members_of(problem, detail, f"urn:uuid:{uuid.uuid4()}"), **(extras or {})}
 
 
 def _finite(value: float) -> float | None:
@@ -209,8 +317,16 @@ def _finite(value: float) -> float | None:
 
 
 def _known(error: Exception) -> Response:
-    problem = next(PROBLEMS[kind] for kind in type(error).__mro__ if kind in PROBLEMS)
-    return document(problem, str(error), problem.extras(error))
+    members = document_of(error)
+    assert members is not None
+    g.problem = members["type"].removeprefix("/problems/")
+    return response_of(members)
+
+
+def _failed(error: JobFailed) -> Response:
+    """A request that was waited for ended with the problem the engine wrote down."""
+    g.problem = str(error.problem["type"]).removeprefix("/problems/")
+    return response_of(error.problem)
 
 
 def _http(error: HTTPException) -> Response:
@@ -220,7 +336,7 @@ def _http(error: HTTPException) -> Response:
         problem = HTTP_PROBLEMS[500]
     response = document(problem, None)
     for name, value in error.get_headers():
-        if name.lower() in {"allow", "retry-after"}:
+        if name.lower() in {"allow", "retry-after", "content-range"}:
             response.headers[name] = value
     return response
 
@@ -236,5 +352,6 @@ def install(app: Flask) -> None:
     """Route every exception of the app through this module."""
     for kind in PROBLEMS:
         app.register_error_handler(kind, _known)
+    app.register_error_handler(JobFailed, _failed)
     app.register_error_handler(HTTPException, _http)
     app.register_error_handler(Exception, _fault)

@@ -8,7 +8,7 @@ from ladderband.formats.plots import stick_plot
 from ladderband.numerics.line_list import LineList
 from ladderband.schemas.line_list import LineListResponse, line_list_members
 from ladderband.schemas.progressions import ProgressionsQuery, ProgressionsRequest
-from ladderband.usecases.progressions import ProgressionsQuestion, progressions
+from ladderband.usecases.progressions import ProgressionsQuestion, estimate_seconds, progressions
 from ladderband.web.resource import Resource
 
 PROGRESSIONS: Resource[ProgressionsQuestion, LineList] = Resource(
@@ -22,6 +22,7 @@ PROGRESSIONS: Resource[ProgressionsQuestion, LineList] = Resource(
     request=ProgressionsRequest(),
     response=LineListResponse,
     use_case=progressions,
+    estimate=estimate_seconds,
     members=line_list_members,
     formats={
         "csv": line_list_csv,

@@ -8,11 +8,12 @@ To add a resource (four steps):
    that describes the answer, and ``NAME_members(question, answer)``: its JSON members, arrays as
    numpy arrays. ``warnings``, ``service_version`` and ``request_digest`` are added here.
 3. ``web/NAME.py``: one ``Resource(...)`` (see ``web/wavefunctions.py``); a renderer for each format
-   beside JSON: a function of (sheet, question, answer) to bytes or an iterator of bytes.
+   beside JSON: a function of (sheet, question, answer) to bytes or an iterator of bytes. Its
+   ``estimate`` decides which requests are dear and run in a compute process.
 4. Add it to ``RESOURCES`` in ``web/resources.py`` and run ``ladderband describe``.
 
-Routing, limits, negotiation, digest, ETag, problem documents, metrics, log line, OpenAPI and the
-tests of its examples follow from the declaration.
+Routing, limits, negotiation, digest, ETag, problem documents, metrics, log line, jobs, sweeps,
+OpenAPI and the tests of its examples follow from the declaration.
 """
 
 from __future__ import annotations
@@ -26,12 +27,15 @@ from flask import Blueprint, Response, current_app, g, request
 from ladderband import __version__
 from ladderband.formats.json_stream import json_chunks, require_finite
 from ladderband.formats.sheet import Sheet
+from ladderband.formats.stored import load_answer
+from ladderband.jobs.submissions import JobView
 from ladderband.numerics.accuracy import Deadline
 from ladderband.schemas.base import AnswerSchema, Loaded, RequestSchema
 from ladderband.schemas.query import QuerySchema, ViewQuery
 from ladderband.settings import Settings
 from ladderband.usecases.limits import Limits
 from ladderband.web.body import read_json
+from ladderband.web.desk import Desk, accepted
 from ladderband.web.digest import request_digest
 from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
 from ladderband.web.problems import AlreadyHeld
@@ -63,6 +67,13 @@ class Resource(Generic[Q, A]):
     """Request bodies by name; each is published and run as a test."""
     short_form: QuerySchema | None = None
     """Also answer GET, with the body written as a query string."""
+    estimate: Callable[[Q], float] | None = None
+    """Seconds of work a question is expected to take, without doing any; None: always few."""
+
+    @property
+    def name(self) -> str:
+        """The resource's word in its path; jobs and sweeps call it by this."""
+        return self.path.rpartition("/")[2]
 
     @property
     def offered(self) -> tuple[str, ...]:
@@ -73,41 +84,64 @@ class Resource(Generic[Q, A]):
         """Answer a POST."""
         settings: Settings = current_app.config["SETTINGS"]
         body = read_json(request.environ, settings.max_body_bytes, settings.max_json_depth)
-        return self.answer(self.request.read(body), _view())
+        return self.answer(body, _view())
 
     def from_query(self) -> Response:
         """Answer a GET in the short form."""
         assert self.short_form is not None
         names = {k: v for k, v in request.args.to_dict(flat=False).items() if k not in VIEW_NAMES}
         body = self.short_form.body(self.short_form.read(names))
-        return self.answer(self.request.read(body), _view())
+        return self.answer(body, _view())
 
-    def answer(self, loaded: Loaded[Q], view: dict[str, Any]) -> Response:
-        """Compute, unless the client holds the answer already, and render."""
+    def answer(self, body: Any, view: dict[str, Any]) -> Response:
+        """Compute, unless the client holds the answer already, and render; or accept a job."""
+        loaded = self.request.read(body)
         name = chosen_format(request, self.offered, view.get("format"))
-        digest = request_digest(self.path, loaded.question)
-        g.digest = digest
-        tag = digest if name == "json" else _tag_of_view(digest, name, view)
+        digest = g.digest = self.digest(loaded.question)
+        tag = tag_of(digest, name, view)
         if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
             return _not_modified(tag)
+        found = self._answered(body, loaded.question, digest)
+        if isinstance(found, JobView):
+            return accepted(found)
+        return _response(self.rendered(loaded, found, name, view), name, tag)
+
+    def _answered(self, body: Any, question: Q, digest: str) -> A | JobView:
+        """The answer, computed here or, when it is dear, in a compute process; or the job."""
+        desk: Desk | None = current_app.config["DESK"]
+        estimate_s = self.estimated(question)
+        if desk is not None and desk.wants(estimate_s):
+            found = desk.answered(self.name, body, digest, estimate_s)
+            return found if isinstance(found, JobView) else load_answer(found)
         limits: Limits = current_app.config["LIMITS"]
         deadline = Deadline.after(current_app.config["SETTINGS"].deadline_s)
-        answer = self.use_case(loaded.question, limits, deadline)
-        warnings = [*loaded.warnings, *getattr(answer, "warnings", ())]
-        if name == "json":
-            body: Body = self._json(loaded.question, answer, warnings, digest)
-        else:
-            require_finite("answer", answer)
-            sheet = Sheet.of(self.summary, digest, warnings, view)
-            body = self.formats[name](sheet, loaded.question, answer)
-        return _response(body, name, tag)
+        return self.use_case(question, limits, deadline)
 
-    def _json(self, question: Q, answer: A, warnings: list[str], digest: str) -> Body:
-        members = self.members(question, answer)
-        members["warnings"] = warnings
+    def digest(self, question: Q) -> str:
+        """Name of the answer to a question."""
+        return request_digest(self.path, question)
+
+    def estimated(self, question: Q) -> float:
+        """Expected seconds of work."""
+        return 0.0 if self.estimate is None else self.estimate(question)
+
+    def rendered(self, loaded: Loaded[Q], answer: A, name: str, view: dict[str, Any]) -> Body:
+        """The body of an answer in one of the offered formats."""
+        digest = self.digest(loaded.question)
+        if name == "json":
+            return json_chunks(self.json_members(loaded, answer, digest))
+        require_finite("answer", answer)
+        warnings = [*loaded.warnings, *getattr(answer, "warnings", ())]
+        sheet = Sheet.of(self.summary, digest, warnings, view)
+        return self.formats[name](sheet, loaded.question, answer)
+
+    def json_members(self, loaded: Loaded[Q], answer: A, digest: str) -> dict[str, Any]:
+        """The members of the JSON answer; arrays as numpy arrays."""
+        members = self.members(loaded.question, answer)
+        members["warnings"] = [*loaded.warnings, *getattr(answer, "warnings", ())]
         members["service_version"] = __version__
         members["request_digest"] = digest
-        return json_chunks(members)
+        return members
 
 
 def _view() -> dict[str, Any]:
@@ -119,8 +153,9 @@ def _view() -> dict[str, Any]:
     return VIEW.read({name: values for name, values in given.items() if name in VIEW_NAMES})
 
 
-def _tag_of_view(digest: str, name: str, view: dict[str, Any]) -> str:
-    return f"{digest}-{name}-{request_digest(name, view)[:8]}"
+def tag_of(digest: str, name: str, view: dict[str, Any]) -> str:
+    """The ETag of one rendering of an answer."""
+    return digest if name == "json" else f"{digest}-{name}-{request_digest(name, view)[:8]}"
 
 
 def _not_modified(tag: str) -> Response:

@@ -1,4 +1,4 @@
-"""The service as a set of gunicorn processes."""
+"""The web processes: gunicorn, as the supervisor starts it."""
 
 from __future__ import annotations
 
@@ -11,7 +11,11 @@ from flask import Flask
 from gunicorn.app.base import BaseApplication
 from prometheus_client.multiprocess import mark_process_dead
 
-from ladderband.settings import Settings
+from ladderband.jobs.parents import die_with_parent
+from ladderband.settings import Settings, load_settings
+
+LISTENER = "LADDERBAND_LISTENER"
+"""Environment variable with the number of the listening socket, which outlives gunicorn."""
 
 WORKER_TIMEOUT_S = 60
 """A worker that gives no sign of life for this long is replaced; not a limit of one request."""
@@ -26,7 +30,7 @@ class Server(BaseApplication):  # type: ignore[misc]
 
     def load_config(self) -> None:
         options = {
-            "bind": f"{_bracketed(self.settings.host)}:{self.settings.port}",
+            "bind": f"fd://{os.environ[LISTENER]}",
             "workers": self.settings.workers,
             "threads": self.settings.threads,
             "worker_class": "ladderband.web.worker.Worker",
@@ -38,6 +42,7 @@ class Server(BaseApplication):  # type: ignore[misc]
             "proc_name": "ladderband",
             "loglevel": "warning",
             "worker_tmp_dir": "/dev/shm" if os.access("/dev/shm", os.W_OK) else None,
+            "post_fork": lambda server, worker: die_with_parent(server.pid),
             "post_worker_init": self._ready,
             "worker_exit": _leave,
             "child_exit": lambda server, worker: _forget(worker.pid),
@@ -51,8 +56,9 @@ class Server(BaseApplication):  # type: ignore[misc]
         from ladderband.formats import plots
         from ladderband.numerics.warm import warm
         from ladderband.web.app import create_app
+        from ladderband.web.desk import Desk
 
-        app = create_app(self.settings)
+        app = create_app(self.settings, Desk.of(self.settings))
         warm()
         plots.warm()
         return app
@@ -62,7 +68,7 @@ class Server(BaseApplication):  # type: ignore[misc]
         # first worker ever started announces, later ones (after a crash) keep quiet.
         if worker.age == 1:
             host, port = worker.sockets[0].getsockname()[:2]
-            print(f"Ladderband answers at http://{_bracketed(host)}:{port}", flush=True)
+            print(f"Ladderband answers at http://{bracketed(host)}:{port}", flush=True)
 
 
 def _leave(server: Any, worker: Any) -> None:
@@ -79,7 +85,8 @@ def _forget(pid: int) -> None:
     mark_process_dead(pid)  # type: ignore[no-untyped-call]
 
 
-def _bracketed(host: str) -> str:
+def bracketed(host: str) -> str:
+    """A host as it stands in an address."""
     return f"[{host}]" if ":" in host else host
 
 
@@ -87,7 +94,12 @@ def _remove_counters(server: Any) -> None:
     shutil.rmtree(os.environ["PROMETHEUS_MULTIPROC_DIR"], ignore_errors=True)
 
 
-def run(settings: Settings) -> None:
-    """Serve until SIGTERM or SIGINT; does not return."""
+def run() -> None:
+    """Serve with the settings and the listening socket of the environment; does not return."""
     sys.argv = sys.argv[:1]  # gunicorn must not read our options
-    Server(settings).run()
+    os.makedirs(os.environ["PROMETHEUS_MULTIPROC_DIR"], exist_ok=True)
+    Server(load_settings()).run()
+
+
+if __name__ == "__main__":
+    run()

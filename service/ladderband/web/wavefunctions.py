@@ -16,6 +16,7 @@ from ladderband.schemas.wavefunctions import (
 from ladderband.usecases.wavefunctions import (
     WavefunctionsAnswer,
     WavefunctionsQuestion,
+    estimate_seconds,
     wavefunctions,
 )
 from ladderband.web.resource import Resource
@@ -48,6 +49,7 @@ WAVEFUNCTIONS: Resource[WavefunctionsQuestion, WavefunctionsAnswer] = Resource(
     request=WavefunctionsRequest(),
     response=WavefunctionsResponse,
     use_case=wavefunctions,
+    estimate=estimate_seconds,
     members=wavefunctions_members,
     formats={"csv": _csv, "svg": svg(wavefunction_plot), "png": png(wavefunction_plot)},
     examples={

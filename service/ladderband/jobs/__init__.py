@@ -1,0 +1,1 @@
+"""Durable jobs: the records, the engines that work them off, and the sweeps made of many points."""

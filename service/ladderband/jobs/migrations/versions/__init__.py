@@ -1,0 +1,1 @@
+"""One module a schema change, in the order of their numbers."""
