@@ -34,18 +34,28 @@ SECONDS = 2.0
 PAIRS = 10_000
 
 EMPTY_APP = """
+import os
+import socket
 import sys
 from flask import Flask
 from ladderband.settings import load_settings
 from ladderband.web import server
 
+class Nothing:
+    def flush(self):
+        pass
+
 class Empty(server.Server):
     def load(self):
         app = Flask("empty")
+        app.config["LEDGER"] = Nothing()
         app.add_url_rule("/empty", "empty", lambda: "{}")
         return app
 
 sys.argv = sys.argv[:1]
+listener = socket.create_server(("127.0.0.1", 0), backlog=2048)
+listener.set_inheritable(True)
+os.environ[server.LISTENER] = str(listener.fileno())
 Empty(load_settings(port=0)).run()
 """
 

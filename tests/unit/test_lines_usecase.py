@@ -154,11 +154,10 @@ def test_a_vanishing_threshold_is_the_best_list_there_is(threshold: float) -> No
     assert answer.enumerated.missing_at_most < 1e-10
 
 
-def test_a_hardly_vibrating_hot_mode_is_answered_or_refused_in_words() -> None:
+def test_a_hardly_vibrating_hot_mode_is_refused_in_words() -> None:
     modes = (Mode(1e-3, 1e-3, 0.1), Mode(500.0, 450.0, 0.3))
     mixing = np.array([[0.8, 0.6], [-0.6, 0.8]])
-    try:
-        answer = ask(Transition(modes, mixing=mixing, temperature_k=1e5))
-        assert answer.lines.completeness.missing_at_most <= 1.0
-    except (CostLimitExceeded, DomainError) as error:
-        assert len(str(error)) > 20
+    hot = Transition(modes, mixing=mixing, temperature_k=1e5)
+    answer = ask(hot)
+    assert answer.enumerated.missing_at_most > 0.5
+    assert any("POST /v1/bands" in warning for warning in answer.warnings)

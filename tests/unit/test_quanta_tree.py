@@ -110,6 +110,7 @@ def test_shared_shells_give_the_same_tree(monkeypatch: pytest.MonkeyPatch) -> No
     rng.normal(size=(6, 6))
     costs(rng, 6, 7)
     monkeypatch.setattr(quanta_tree, "THREADED_FROM", 2)
+    monkeypatch.setattr(quanta_tree, "INNER_FROM", 2)
     shared = tree_of(M, rng.normal(size=6), 1.0, cost, 6.0)
     assert len(alone.amplitude) > 500
     for one, two in zip(vars(alone).values(), vars(shared).values(), strict=True):

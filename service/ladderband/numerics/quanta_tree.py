@@ -27,6 +27,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from contextlib import nullcontext
 from dataclasses import dataclass
 from typing import Any
 
@@ -42,8 +43,11 @@ COST_UNIT = 2.0**-20
 below the budget or not whatever the order of its quanta: smaller sets are never missing."""
 
 
-THREADED_FROM = 8192
-"""Inner nodes of a shell from which two threads pay (a shell of that size takes about 1 ms)."""
+THREADED_FROM = 50_000
+"""Nodes of a tree from which two threads are started (some 0.2 ms)."""
+
+INNER_FROM = 2048
+"""Inner nodes of a shell from which it is shared (a shell of that size takes about 0.3 ms)."""
 
 Shell = tuple[NDArray[np.int32], Floats, NDArray[np.int64], NDArray[np.int64]]
 """Nodes of a shell that have children: place, budget left, cuts of the list, lower neighbours."""
@@ -130,10 +134,10 @@ def _packed(place, index, quanta):  # type: ignore[no-untyped-def]
 
 
 @njit(cache=True, nogil=True)
-def _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound):  # type: ignore[no-untyped-def]
+def _family(q, low, stop, neighbours, M, w, root, nodes, step, value, bound):  # type: ignore[no-untyped-def]
     """sqrt(q_l + 1) times amplitude and error of the children l = low..stop-1 of q."""
-    own = amplitude[q]
-    own_error = error[q] + step * abs(own)
+    own = nodes[q, 0]
+    own_error = nodes[q, 1] + step * abs(own)
     for up in range(low, stop):
         value[up] = w[up] * own
         bound[up] = abs(w[up]) * own_error
@@ -141,8 +145,8 @@ def _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value,
         place = neighbour >> _PLACE
         row = (neighbour >> _INDEX) & _MASK
         factor = root[neighbour & _MASK]
-        size = factor * amplitude[place]
-        size_error = factor * error[place] + step * abs(size)
+        size = factor * nodes[place, 0]
+        size_error = factor * nodes[place, 1] + step * abs(size)
         for up in range(low, stop):
             coefficient = M[row, up]
             value[up] += coefficient * size
@@ -150,10 +154,10 @@ def _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value,
 
 
 @njit(cache=True, nogil=True)
-def _child_neighbours(q, up, quanta, neighbours, child_base, out, at):  # type: ignore[no-untyped-def]
+def _child_neighbours(q, up, quanta, neighbours, nodes, out, at):  # type: ignore[no-untyped-def]
     """Lower neighbours of k = q + e_l into ``out`` from ``at`` on: k - e_j is child l of q - e_j."""
     for neighbour in neighbours:
-        place = child_base[neighbour >> _PLACE] + up
+        place = np.int64(nodes[neighbour >> _PLACE, 2]) + up
         out[at] = _packed(place, (neighbour >> _INDEX) & _MASK, neighbour & _MASK)
         at += 1
     out[at] = _packed(q, up, quanta)
@@ -164,17 +168,17 @@ def _child_neighbours(q, up, quanta, neighbours, child_base, out, at):  # type: 
 def _moment_of(child, neighbours, terms, root, found, step):  # type: ignore[no-untyped-def]
     """Moment amplitude m_0 S(k) + sum_j m_j sqrt(k_j) S(k - e_j) of one node, and its bound."""
     constant, linear = terms
-    amplitude, error, moment, moment_error = found
+    nodes, moment, moment_error = found
     for x in range(3):
-        value = constant[x] * amplitude[child]
+        value = constant[x] * nodes[child, 0]
         size = abs(value)
-        bound = abs(constant[x]) * error[child]
+        bound = abs(constant[x]) * nodes[child, 1]
         for neighbour in neighbours:
             place = neighbour >> _PLACE
             factor = linear[x, (neighbour >> _INDEX) & _MASK] * root[neighbour & _MASK]
-            value += factor * amplitude[place]
-            size += abs(factor * amplitude[place])
-            bound += abs(factor) * error[place]
+            value += factor * nodes[place, 0]
+            size += abs(factor * nodes[place, 0])
+            bound += abs(factor) * nodes[place, 1]
         moment[child, x] = value
         moment_error[child, x] = 1.01 * bound + step * size
 
@@ -211,12 +215,12 @@ def _fill(begin, end, free, filled, entry, shell, below, tree, ladder, cost, mom
     """
     inner, left, at, lists = shell
     new_inner, new_left, new_at, new_lists = below
-    amplitude, error, parent, last, child_base = tree
+    nodes, parent, last = tree
     M, w, root, single = ladder
     constant, linear, moment, moment_error = moments
     varies = len(linear) > 0
     terms = (constant, linear)
-    found = (amplitude, error, moment, moment_error)
+    found = (nodes, moment, moment_error)
     value, bound = np.empty(len(w)), np.empty(len(w))
     own_list = np.empty(len(w) + 1, dtype=np.int64)
     for s in range(begin, end):
@@ -227,8 +231,8 @@ def _fill(begin, end, free, filled, entry, shell, below, tree, ladder, cost, mom
         raised = _again(tail, own, left[s], cost)
         low = tail if raised else tail + 1
         stop = _stop(tail, left[s], single)
-        child_base[q] = free - low
-        _family(q, low, stop, neighbours, M, w, root, amplitude, error, step, value, bound)
+        nodes[q, 2] = free - low
+        _family(q, low, stop, neighbours, M, w, root, nodes, step, value, bound)
         for up in range(low, stop):
             quanta = 1
             rest = left[s] - single[up]
@@ -238,15 +242,15 @@ def _fill(begin, end, free, filled, entry, shell, below, tree, ladder, cost, mom
                 rest = left[s] - (cost[up, quanta] - cost[up, own])
                 others = neighbours[:-1]
             scale = 1.0 / root[quanta]
-            amplitude[free] = value[up] * scale
-            error[free] = bound[up] * scale
+            nodes[free, 0] = value[up] * scale
+            nodes[free, 1] = bound[up] * scale
             parent[free] = q
             last[free] = up
             if varies:
-                size = _child_neighbours(q, up, quanta, others, child_base, own_list, 0)
+                size = _child_neighbours(q, up, quanta, others, nodes, own_list, 0)
                 _moment_of(free, own_list[:size], terms, root, found, step)
             if _has_children(up, quanta, rest, cost, single):
-                entry = _child_neighbours(q, up, quanta, others, child_base, new_lists, entry)
+                entry = _child_neighbours(q, up, quanta, others, nodes, new_lists, entry)
                 new_inner[filled] = free
                 new_left[filled] = rest
                 filled += 1
@@ -273,12 +277,13 @@ def grow_tree(
     """
     single = cost[:, 1].copy()
     root = np.sqrt(np.arange(cost.shape[1] + 2, dtype=np.float64))
-    amplitude, error = np.empty(nodes), np.empty(nodes)
+    # amplitude, error, and the place of the (imagined) child 0: child l stands l places further.
+    # Side by side, because they are read together at random places.
+    records = np.empty((nodes, 3))
     parent, last = np.empty(nodes, dtype=np.int32), np.empty(nodes, dtype=np.int16)
-    child_base = np.empty(nodes, dtype=np.int32)  # child l of node q stands at child_base[q] + l
-    amplitude[0], error[0], parent[0], last[0] = start, start_error * abs(start), 0, -1
-    moment, moment_error = _moment_arrays(constant, linear, start, float(error[0]), nodes)
-    tree = (amplitude, error, parent, last, child_base)
+    records[0], parent[0], last[0] = (start, start_error * abs(start), 0.0), 0, -1
+    moment, moment_error = _moment_arrays(constant, linear, start, start_error * abs(start), nodes)
+    tree = (records, parent, last)
     ladder = (M, w, root, single)
     moments = (constant, linear, moment, moment_error)
     shell = (
@@ -288,16 +293,19 @@ def grow_tree(
         np.empty(0, dtype=np.int64),
     )
     free, quanta = 1, 0
-    while len(shell[0]):
-        quanta += 1
-        # roundings of one element: a product and a sum for each of at most ``quanta`` neighbours,
-        # sqrt, factor, scale, and 16 for the coefficients M, w themselves
-        step = 1.01 * (quanta + 22.0) * UNIT_ROUNDOFF
-        shell, free = _next_shell(shell, free, tree, ladder, cost, moments, step)
+    with ThreadPoolExecutor(2) if nodes >= THREADED_FROM else nullcontext() as pool:
+        while len(shell[0]):
+            quanta += 1
+            # roundings of one element: a product and a sum for each of at most ``quanta``
+            # neighbours, sqrt, factor, scale, and 16 for the coefficients M, w themselves
+            step = 1.01 * (quanta + 22.0) * UNIT_ROUNDOFF
+            shell, free = _next_shell(pool, shell, free, tree, ladder, cost, moments, step)
+    amplitude, error = np.ascontiguousarray(records[:, :2].T)
     return QuantaTree(amplitude, error, parent, last, moment, moment_error)
 
 
 def _next_shell(
+    pool: ThreadPoolExecutor | None,
     shell: Shell,
     free: int,
     tree: tuple[Any, ...],
@@ -307,16 +315,16 @@ def _next_shell(
     step: float,
 ) -> tuple[Shell, int]:
     """The shell above ``shell``, its nodes written from place ``free`` on; and the next free place."""
-    last, single = tree[3], ladder[3]
-    slices = _slices(len(shell[0]))
-    plans = _each(lambda a, b: _plan(a, b, shell, last, cost, single), slices)
+    last, single = tree[2], ladder[3]
+    slices = _slices(len(shell[0]), pool is not None)
+    plans = _each(pool, lambda a, b: _plan(a, b, shell, last, cost, single), slices)
     offsets = np.cumsum([(0, 0, 0), *plans], axis=0).tolist()
     below = _empty_shell(offsets[-1][1], offsets[-1][2])
     jobs = [
         (*piece, free + offset[0], offset[1], offset[2])
         for piece, offset in zip(slices, offsets, strict=False)
     ]
-    _each(lambda *job: _fill(*job, shell, below, tree, ladder, cost, moments, step), jobs)
+    _each(pool, lambda *job: _fill(*job, shell, below, tree, ladder, cost, moments, step), jobs)
     return below, free + offsets[-1][0]
 
 
@@ -341,19 +349,20 @@ def _empty_shell(parents: int, entries: int) -> Shell:
     )
 
 
-def _slices(count: int) -> list[tuple[int, int]]:
-    """One slice of a small shell, two of a large one."""
-    if count < THREADED_FROM:
+def _slices(count: int, shared: bool) -> list[tuple[int, int]]:
+    """One slice of a small shell, two of a large one when there are threads to share it."""
+    if not shared or count < INNER_FROM:
         return [(0, count)]
     return [(0, count // 2), (count // 2, count)]
 
 
-def _each(action: Callable[..., Any], jobs: Sequence[tuple[int, ...]]) -> list[Any]:
+def _each(
+    pool: ThreadPoolExecutor | None, action: Callable[..., Any], jobs: Sequence[tuple[int, ...]]
+) -> list[Any]:
     """``action`` on every job, side by side when there are several (the kernels hold no lock)."""
-    if len(jobs) == 1:
-        return [action(*jobs[0])]
-    with ThreadPoolExecutor(len(jobs)) as pool:
-        return list(pool.map(lambda job: action(*job), jobs))
+    if pool is None or len(jobs) == 1:
+        return [action(*job) for job in jobs]
+    return list(pool.map(lambda job: action(*job), jobs))
 
 
 @njit(cache=True, nogil=True)
