@@ -15,6 +15,8 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import IO
 
+import psutil
+
 KERNELS = Path(tempfile.gettempdir()) / f"ladderband-tests-{os.getuid()}"
 ADDRESS = re.compile(rb"Ladderband answers at (http://\S+)")
 
@@ -25,6 +27,20 @@ class LiveServer:
 
     url: str
     process: subprocess.Popen[bytes]
+
+    def family(self) -> list[psutil.Process]:
+        """Every process of the service: supervisor, web, engines and their children."""
+        supervisor = psutil.Process(self.process.pid)
+        return [supervisor, *supervisor.children(recursive=True)]
+
+    def web_workers(self) -> list[psutil.Process]:
+        """The processes that answer requests."""
+        (web,) = (
+            child
+            for child in psutil.Process(self.process.pid).children()
+            if "ladderband.web.server" in child.cmdline()
+        )
+        return web.children()
 
     def stop(self, grace_s: float = 30.0) -> int:
         """Send SIGTERM and wait; returns the exit status."""

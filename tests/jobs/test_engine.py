@@ -138,9 +138,10 @@ def test_an_engine_that_stops_gives_its_shards_back(database: Database) -> None:
 
 
 def test_no_compute_process_outlives_its_engine(database: Database) -> None:
+    before = set(psutil.Process().children())
     with running(database, slots=2):
-        until(lambda: len(psutil.Process().children()) == 2)
-    assert psutil.Process().children() == []
+        until(lambda: len(psutil.Process().children()) == len(before) + 2)
+    assert set(psutil.Process().children()) <= before
 
 
 def test_a_dead_process_of_this_machine_is_known_to_be_gone() -> None:

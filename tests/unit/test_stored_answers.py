@@ -23,7 +23,8 @@ EXAMPLES = [
 def test_an_answer_comes_back_with_the_same_numbers(resource, body):
     loaded = resource.request.read(body)
     answer = resource.use_case(loaded.question, Limits(work_s=60.0), Deadline.none())
-    again = load_answer(dump_answer(answer))
+    data = dump_answer(answer)
+    again = load_answer(data[k : k + 1000] for k in range(0, len(data), 1000))
     view = ViewQuery().read({})
     for name in resource.offered:
         # plots hold identifiers of their own; many digits have no npy
@@ -50,7 +51,7 @@ class Harmful:
 )
 def test_anything_else_is_refused(data, capsys):
     try:
-        found = load_answer(data)
+        found = load_answer([data])
     except UnreadableAnswer:
         pass
     else:

@@ -10,7 +10,7 @@ from ladderband.numerics.certificate import certified_tables
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.oscillators import one_pair
 from ladderband.numerics.transition import Mode
-from ladderband.usecases.limits import CostLimitExceeded, Limits
+from ladderband.usecases.limits import AnswerTooLarge, CostLimitExceeded, Limits
 from ladderband.usecases.wavefunctions import WavefunctionsQuestion, wavefunctions
 
 
@@ -60,7 +60,8 @@ def test_an_empty_range_is_refused() -> None:
 
 
 def test_too_many_numbers_are_refused_before_any_work() -> None:
+    question = WavefunctionsQuestion(Mode(900.0, 700.0), 180, 50, 100_001)
+    with pytest.raises(AnswerTooLarge, match="23200232 numbers"):
+        wavefunctions(question, Limits(), Deadline.none())
     with pytest.raises(CostLimitExceeded, match="fewer points or levels"):
-        wavefunctions(
-            WavefunctionsQuestion(Mode(900.0, 700.0), 180, 50, 100_001), Limits(), Deadline.none()
-        )
+        wavefunctions(question, Limits(table_elements=10**8), Deadline.none())

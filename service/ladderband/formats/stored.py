@@ -9,6 +9,7 @@ from __future__ import annotations
 import dataclasses
 import io
 import pickle
+from collections.abc import Iterable
 from typing import Any
 
 _PLAIN = {
@@ -31,12 +32,41 @@ def dump_answer(answer: Any) -> bytes:
     return pickle.dumps(answer, protocol=5)
 
 
-def load_answer(data: bytes) -> Any:
-    """The answer; raises UnreadableAnswer for anything but an answer of this version."""
+def load_answer(parts: Iterable[bytes]) -> Any:
+    """The answer whose bytes come in parts, one of them in memory at a time.
+
+    Raises
+    ------
+    UnreadableAnswer
+        The bytes are anything but an answer of this version.
+    """
     try:
-        return _Answers(io.BytesIO(data)).load()
+        with io.BufferedReader(_Parts(parts)) as stream:
+            return _Answers(stream).load()
     except (pickle.UnpicklingError, EOFError, AttributeError, ImportError, TypeError) as error:
         raise UnreadableAnswer("The stored result cannot be read by this version.") from error
+
+
+class _Parts(io.RawIOBase):
+    """Parts as one stream: joined first, a large answer would be held twice."""
+
+    def __init__(self, parts: Iterable[bytes]) -> None:
+        self._parts = iter(parts)
+        self._left = memoryview(b"")
+
+    def readable(self) -> bool:
+        return True
+
+    def readinto(self, buffer: Any, /) -> int:
+        while not self._left:
+            part = next(self._parts, None)
+            if part is None:
+                return 0
+            self._left = memoryview(part)
+        taken = self._left[: len(buffer)]
+        buffer[: len(taken)] = taken
+        self._left = self._left[len(taken) :]
+        return len(taken)
 
 
 class _Answers(pickle.Unpickler):

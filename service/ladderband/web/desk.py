@@ -11,6 +11,7 @@ import hashlib
 import re
 import threading
 import time
+from collections.abc import Iterable
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from typing import Any
@@ -56,8 +57,10 @@ class Desk:
         """True for work that is not done in the web process."""
         return estimate_s > self.settings.small_s or prefers_async()
 
-    def answered(self, kind: str, body: Any, digest: str, estimate_s: float) -> bytes | JobView:
-        """The stored answer when it comes in time, else the job.
+    def answered(
+        self, kind: str, body: Any, digest: str, estimate_s: float
+    ) -> Iterable[bytes] | JobView:
+        """The parts of the stored answer when it comes in time, else the job.
 
         Raises
         ------
@@ -75,7 +78,7 @@ class Desk:
         if job.state == "failed" and job.problem is not None and lane == INTERACTIVE:
             raise JobFailed(complete(job))
         if lane == INTERACTIVE and job.has_result:
-            return b"".join(parts_of(self.database, job.id))
+            return parts_of(self.database, job.id)
         return job
 
     def _waited_for(self, job: JobView) -> JobView:

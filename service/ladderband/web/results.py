@@ -52,13 +52,12 @@ def _rendered(
     desk: Desk, job: JobView, resource: Resource[Any, Any], name: str, view: dict[str, Any]
 ) -> Body:
     body = request_of(desk.database, job.id)
-    data = b"".join(parts_of(desk.database, job.id))
-    if body is None or not data:
+    if body is None:
         raise ResultGone(job.id)
     try:
-        answer = load_answer(data)
+        answer = load_answer(parts_of(desk.database, job.id))
     except UnreadableAnswer:
-        raise ResultGone(job.id) from None  # of an older version
+        raise ResultGone(job.id) from None  # nothing there, or of an older version
     return resource.rendered(resource.request.read(orjson.loads(body)), answer, name, view)
 
 
