@@ -18,22 +18,16 @@ sys.path.insert(0, str(Path(__file__).parents[1]))
 
 import math
 import multiprocessing
-import resource
 import time
 from dataclasses import replace
 
 import numpy as np
 
-from ladderband.numerics import quanta_tree
+from ladderband.numerics import quanta_table
 from ladderband.numerics.certified_generator import certified_thermal_generator
 from ladderband.numerics.enumeration import coupled_problem
-from ladderband.numerics.quanta_tree import (
-    COST_UNIT,
-    QuantaTree,
-    count_nodes,
-    grow_tree,
-    quanta_of,
-)
+from ladderband.numerics.quanta_lists import COST_UNIT, count_sets, quanta_pairs
+from ladderband.numerics.quanta_table import Ladder, QuantaTable, amplitude_table
 from ladderband.numerics.transition import Transition
 from line_oracles import dictionary_amplitudes, random_transition
 
@@ -56,18 +50,18 @@ def prepared(transition: Transition = TWELVE) -> Prepared:
     return M, generator.w[problem.modes].copy(), float(np.exp(generator.log_c)), problem.cost
 
 
-def grown(case: Prepared, budget: float) -> QuantaTree:
+def grown(case: Prepared, budget: float) -> QuantaTable:
     M, w, start, cost = case
-    nodes = count_nodes(cost, budget, 10**9)
-    none = np.zeros((0, len(w)))
-    return grow_tree(M, w, start, 1e-16, cost, budget, nodes, np.zeros(3), none)
+    pairs = quanta_pairs(cost, budget, 10**9)
+    assert pairs is not None
+    return amplitude_table(pairs, Ladder(M, w, start, 1e-16, np.zeros(3), np.zeros((0, len(w)))))
 
 
 def budget_for(case: Prepared, nodes: int) -> float:
     low, high = 0.0, 60.0
     while high - low > 1e-3:
         middle = 0.5 * (low + high)
-        if count_nodes(case[3], middle, nodes) > nodes:
+        if count_sets(case[3], middle, nodes) > nodes:
             high = middle
         else:
             low = middle
@@ -85,8 +79,8 @@ def timed(action: object, repeats: int = 3) -> float:
 
 def against_dictionary(name: str, case: Prepared, sets: int) -> None:
     budget = budget_for(case, sets)
-    tree = grown(case, budget)
-    keys = list(map(tuple, quanta_of(tree, np.arange(len(tree.amplitude)), len(case[1])).tolist()))
+    pairs = grown(case, budget).pairs
+    keys = list(map(tuple, pairs.quanta(np.arange(pairs.count)).tolist()))
     rows, w = case[0].tolist(), case[1].tolist()
     plain = timed(lambda: dictionary_amplitudes(rows, w, case[2], keys, math.sqrt), 1)
     ours = timed(lambda: grown(case, budget), 10)
@@ -99,7 +93,7 @@ def against_dictionary(name: str, case: Prepared, sets: int) -> None:
 
 def against_memory(case: Prepared) -> None:
     budget = budget_for(case, 1_000_000)
-    nodes = count_nodes(case[3], budget, 10**9)
+    nodes = count_sets(case[3], budget, 10**9)
     source, target = np.ones(nodes), np.empty(nodes)
     stream = timed(lambda: np.copyto(target, source), 10)
     ours = timed(lambda: grown(case, budget))
@@ -109,14 +103,20 @@ def against_memory(case: Prepared) -> None:
 def one_size(nodes: int, queue: multiprocessing.Queue) -> None:  # type: ignore[type-arg]
     case = prepared()
     grown(case, 1.0)
-    before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
     budget = budget_for(case, nodes)
+    Path("/proc/self/clear_refs").write_text("5")  # forget the peak of the compiler
+    before = peak_megabytes()
     start = time.perf_counter()
-    tree = grown(case, budget)
+    table = grown(case, budget)
     seconds = time.perf_counter() - start
-    after = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
-    captured = float(np.sum(tree.amplitude**2))
-    queue.put((len(tree.amplitude), seconds, (after - before) / 1024.0, captured))
+    megabytes = peak_megabytes() - before
+    queue.put((len(table.amplitude), seconds, megabytes, float(np.sum(table.amplitude**2))))
+
+
+def peak_megabytes() -> float:
+    """Largest resident memory since it was last forgotten (Linux)."""
+    lines = Path("/proc/self/status").read_text().splitlines()
+    return float(next(line.split()[1] for line in lines if line.startswith("VmHWM"))) / 1024
 
 
 def growth() -> None:
@@ -134,12 +134,12 @@ def growth() -> None:
 
 
 def two_cores(case: Prepared) -> None:
-    """The same tree with its large shells shared by two threads, and not."""
+    """The same table with its large shells shared by two threads, and not."""
     budget = budget_for(case, 1_000_000)
     shared = timed(lambda: grown(case, budget), 5)
-    quanta_tree.THREADED_FROM, before = 10**12, quanta_tree.THREADED_FROM
+    quanta_table.THREADED_FROM, before = 10**12, quanta_table.THREADED_FROM
     alone = timed(lambda: grown(case, budget), 5)
-    quanta_tree.THREADED_FROM = before
+    quanta_table.THREADED_FROM = before
     print(f"10^6 sets: two cores against one {alone / shared:.2f}x (goal 1.7x)")
 
 

@@ -3,7 +3,7 @@ r"""The assigned lines of one block of coupled modes: few amplitudes, and what i
 Which sets of quanta to take is decided by the exact one-mode marginals: with P_i the distribution of
 index i (final quanta from :mod:`marginals`, initial quanta geometric) the cost of n quanta is
 c_i(n) = ln max_j P_i(j) / max_{j>=n} P_i(j), and the sets with total cost <= C are enumerated
-(:mod:`quanta_tree`). C is first chosen from the convolution of the marginals as if they were
+(:mod:`quanta_lists`). C is first chosen from the convolution of the marginals as if they were
 independent, which also predicts the work, and raised until what is missing is proved to be small:
 
 .. math::
@@ -14,7 +14,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,13 +26,8 @@ from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.line_list import Quanta
 from ladderband.numerics.marginals import gaussian_modes, marginal
 from ladderband.numerics.progression import thermal_populations
-from ladderband.numerics.quanta_tree import (
-    COST_UNIT,
-    QuantaTree,
-    count_nodes,
-    grow_tree,
-    quanta_of,
-)
+from ladderband.numerics.quanta_lists import COST_UNIT, QuantaPairs, quanta_pairs
+from ladderband.numerics.quanta_table import Ladder, QuantaTable, amplitude_table
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.units import boltzmann_exponent
 
@@ -174,7 +169,7 @@ def enumerate_block(
 ) -> BlockLines:
     """Lines of one block until at most ``tolerance`` is missing, or ``node_limit`` sets are used.
 
-    The caller compares ``missing_at_most`` with its tolerance. Cost: some 50 ns a set, and the
+    The caller compares ``missing_at_most`` with its tolerance. Cost: some 20 ns a set, and the
     generator in balls.
 
     Raises
@@ -188,28 +183,18 @@ def enumerate_block(
     budget = min(COST_MAX, prediction.budget_for(0.7 * tolerance))
     while True:
         deadline.check()
-        nodes = count_nodes(problem.cost, budget, node_limit)
-        clipped = nodes > node_limit
-        if clipped:
-            budget, nodes = _largest_within(problem, prediction, node_limit)
-        lines = _lines(problem, _tree(problem, ladder, budget, nodes))
+        pairs = quanta_pairs(problem.cost, budget, node_limit)
+        clipped = pairs is None
+        if pairs is None:
+            pairs = _most_within(problem, prediction, node_limit)
+        lines = _lines(problem, amplitude_table(pairs, ladder))
         if lines.missing_at_most <= tolerance or clipped or budget >= COST_MAX:
             return lines
         budget = min(COST_MAX, _raised(prediction, budget, lines.missing_at_most / tolerance))
 
 
-@dataclass(frozen=True)
-class _Ladder:
+def _ladder(problem: CoupledProblem) -> Ladder:
     """What the recursion needs, in the order of the problem's indices."""
-
-    M: Floats
-    w: Floats
-    start: float
-    constant: Floats
-    linear: Floats
-
-
-def _ladder(problem: CoupledProblem) -> _Ladder:
     generator, moment = certified_thermal_generator(problem.transition)
     if generator.log_c < -600.0:
         raise DomainError(
@@ -219,25 +204,23 @@ def _ladder(problem: CoupledProblem) -> _Ladder:
         )
     modes = problem.modes
     linear = np.zeros((0, len(modes))) if moment is None else moment.linear[:, modes]
-    return _Ladder(
-        np.ascontiguousarray(generator.W[np.ix_(modes, modes)]),
-        np.ascontiguousarray(generator.w[modes]),
-        math.exp(generator.log_c),
-        np.zeros(3) if moment is None else moment.constant,
-        np.ascontiguousarray(linear),
+    return Ladder(
+        M=np.ascontiguousarray(generator.W[np.ix_(modes, modes)]),
+        w=np.ascontiguousarray(generator.w[modes]),
+        start=math.exp(generator.log_c),
+        # c: its logarithm, at most 600, was rounded, and exp rounds: 600 u + 4 u, and the entry's own
+        start_error=2.0 * ENTRY_ERROR + 604.0 * UNIT_ROUNDOFF,
+        constant=np.zeros(3) if moment is None else moment.constant,
+        linear=np.ascontiguousarray(linear),
     )
 
 
-def _largest_within(
-    problem: CoupledProblem, prediction: Prediction, limit: int
-) -> tuple[float, int]:
-    """The largest budget, to 1/32, whose number of sets is within the limit."""
+def _most_within(problem: CoupledProblem, prediction: Prediction, limit: int) -> QuantaPairs:
+    """The sets below the largest budget, to 1/32, that lets in at most ``limit`` of them."""
     budget = prediction.budget_within(limit)
-    nodes = count_nodes(problem.cost, budget, limit)
-    while nodes > limit:
+    while (pairs := quanta_pairs(problem.cost, budget, limit)) is None:
         budget -= 1.0 / 32.0
-        nodes = count_nodes(problem.cost, budget, limit)
-    return budget, nodes
+    return pairs
 
 
 def _raised(prediction: Prediction, budget: float, excess: float) -> float:
@@ -246,33 +229,17 @@ def _raised(prediction: Prediction, budget: float, excess: float) -> float:
     return max(budget + 0.5, prediction.budget_for(0.7 * missing / excess))
 
 
-def _tree(problem: CoupledProblem, ladder: _Ladder, budget: float, nodes: int) -> QuantaTree:
-    # c: its logarithm, at most 600, was rounded, and exp rounds: 600 u + 4 u, and the entry's own
-    start_error = 2.0 * ENTRY_ERROR + 604.0 * UNIT_ROUNDOFF
-    tree = grow_tree(
-        ladder.M,
-        ladder.w,
-        ladder.start,
-        start_error,
-        problem.cost,
-        budget,
-        nodes,
-        ladder.constant,
-        ladder.linear,
-    )
-    # entries of M known to 1e-25 absolute only, in sums of at most 1e5 terms below 1
-    return replace(tree, error=tree.error + 1e-20)
-
-
-def _lines(problem: CoupledProblem, tree: QuantaTree) -> BlockLines:
-    """Intensities and bounds of all sets of the tree."""
-    if len(tree.moment):
-        intensity = np.sum(tree.moment**2, axis=1)
-        error = tree.moment_error + 1e-18
-        bound = np.sum((2.0 * np.abs(tree.moment) + error) * error, axis=1)
+def _lines(problem: CoupledProblem, table: QuantaTable) -> BlockLines:
+    """Intensities and bounds of all sets of the table."""
+    if len(table.moment):
+        intensity = np.sum(table.moment**2, axis=0)
+        error = table.moment_error + 1e-18
+        bound = np.sum((2.0 * np.abs(table.moment) + error) * error, axis=0)
     else:
-        intensity = tree.amplitude**2
-        bound = (2.0 * np.abs(tree.amplitude) + tree.error) * tree.error
+        intensity = table.amplitude**2
+        # entries of M known to 1e-25 absolute only, in sums of at most 1e5 terms below 1
+        error = table.error + 1e-20
+        bound = (2.0 * np.abs(table.amplitude) + error) * error
     bound = 1.001 * bound + 4.0 * UNIT_ROUNDOFF * intensity
     # summing L positive numbers that add up to about 1 in pairs: below (L/128 + 30) u each way
     rounding = (len(intensity) / 64.0 + 60.0) * UNIT_ROUNDOFF
@@ -281,7 +248,7 @@ def _lines(problem: CoupledProblem, tree: QuantaTree) -> BlockLines:
 
     def quanta(chosen: Places) -> tuple[Quanta, Quanta]:
         rows = np.zeros((len(chosen), 2 * count), dtype=np.int32)
-        rows[:, problem.modes] = quanta_of(tree, chosen, len(problem.modes))
+        rows[:, problem.modes] = table.pairs.quanta(chosen)
         return rows[:, :count], rows[:, count:]
 
     return BlockLines(
@@ -290,6 +257,6 @@ def _lines(problem: CoupledProblem, tree: QuantaTree) -> BlockLines:
         quanta=quanta,
         sum_bound=sum_bound,
         missing_at_most=max(0.0, 1.0 - float(intensity.sum()) + sum_bound),
-        route="quanta tree",
+        route="quanta table",
         examined=len(intensity),
     )

@@ -31,6 +31,11 @@ class Selection:
     low_cm1: float = -math.inf
     high_cm1: float = math.inf
 
+    @property
+    def has_window(self) -> bool:
+        """True when lines may lie outside of it."""
+        return not (math.isinf(self.low_cm1) and math.isinf(self.high_cm1))
+
 
 def transition_blocks(transition: Transition) -> list[BlockIndices]:
     """Blocks that multiply; a moment that varies couples all modes into one."""
@@ -44,7 +49,7 @@ def transition_blocks(transition: Transition) -> list[BlockIndices]:
 def block_lines(
     transition: Transition, block: BlockIndices, tolerance: float, limit: int, deadline: Deadline
 ) -> BlockLines:
-    """Lines of one block: a certified table for a mode alone, the quanta tree for mixed modes."""
+    """Lines of one block: a certified table for a mode alone, the quanta table for mixed modes."""
     if len(block.final) == 1 and transition.moment is None:
         part = block_transition(transition, block)
         sticks = complete_mode_sticks(
@@ -241,6 +246,8 @@ def _selected(
     strong = np.flatnonzero(
         joint.intensity >= selection.threshold * joint.intensity.max(initial=0.0)
     )
+    if not selection.has_window:  # most of the time would go into sorting what is not kept
+        strong = strong[_strongest(joint.intensity[strong], selection.max_lines)]
     order = strong[np.argsort(-joint.intensity[strong], kind="stable")]
     chosen, v, n, position = _inside(transition, blocks, parts, joint, order, selection)
     return _line_list(parts, joint, chosen, (position, v, n))
@@ -274,7 +281,7 @@ def _inside(
     selection: Selection,
 ) -> tuple[Places, Quanta, Quanta, Floats]:
     """Walk down the strongest lines until ``max_lines`` of them lie inside the window."""
-    if math.isinf(selection.low_cm1) and math.isinf(selection.high_cm1):
+    if not selection.has_window:
         chosen = order[: selection.max_lines]
         v, n = _quanta(transition, blocks, parts, joint.places[chosen])
         return chosen, v, n, positions(transition, v, n)

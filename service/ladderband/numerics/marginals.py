@@ -23,6 +23,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,6 +34,9 @@ from ladderband.numerics.units import boltzmann_exponent
 
 LENGTH_MAX = 1 << 14
 """Longest distribution; 2000 quanta of the hottest mode end far below it."""
+
+_TRIALS = np.geomspace(1e-4, 0.999, 200)
+"""Where the Chernoff bound is tried, as shares of the largest s - 1 allowed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,7 +68,7 @@ class GaussianMode:
         for variance in (self.variance_q, self.variance_p):
             if variance > 0.5 + 1e-12:
                 limit = min(limit, (2.0 * variance + 1.0) / (2.0 * variance - 1.0) - 1.0)
-        t = limit * np.geomspace(1e-4, 0.999, 200)  # s = 1 + t
+        t = limit * _TRIALS  # s = 1 + t
         slope_q, slope_p = 1.0 - 2.0 * self.variance_q, 1.0 - 2.0 * self.variance_p
         a_q = 2.0 + t * slope_q
         a_p = 2.0 + t * slope_p
@@ -100,8 +104,9 @@ def gaussian_modes(transition: Transition) -> list[GaussianMode]:
     ]
 
 
+@lru_cache(maxsize=512)
 def marginal(mode: GaussianMode, tolerance: float = 1e-12) -> Marginal:
-    """Distribution of the quanta of one mode.
+    """Distribution of the quanta of one mode; kept, because estimate, enumeration and report ask.
 
     Notes
     -----
@@ -116,6 +121,7 @@ def marginal(mode: GaussianMode, tolerance: float = 1e-12) -> Marginal:
     s = np.exp(2j * np.pi * np.arange(length) / length)
     values = mode.generating(s)
     probabilities: Floats = np.fft.fft(values).real / length
+    probabilities.flags.writeable = False
     smallest = min(2.0, 4.0 * mode.variance_q)  # |a_q| on the circle
     exponent = 2.0 * mode.mean**2 / smallest
     rounding = 8.0 * UNIT_ROUNDOFF * (4.0 + exponent + math.log2(length))

@@ -35,7 +35,7 @@ def _warm_bands() -> None:
 
 
 def _warm_lines() -> None:
-    """The quanta tree, with and without a varying moment."""
+    """The quanta table, with and without a varying moment."""
     mixing = np.array([[0.8, 0.6], [-0.6, 0.8]])
     modes = (Mode(1000.0, 900.0, 0.5), Mode(600.0, 650.0, 0.2))
     moments = (None, Moment(np.array([1.0, 0.0, 0.0]), np.full((2, 3), 0.1)))
