@@ -26,7 +26,8 @@ from ladderband.numerics.correlation import correlation_function, coupled_modes,
 from ladderband.numerics.transition import Mode, Transition
 from ladderband.numerics.warm import warm
 from ladderband.usecases import bands as module
-from ladderband.usecases.bands import BandsQuestion, LineShape, Species, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsQuestion, LineShape, Species
 from ladderband.usecases.kept_transitions import KeptTransitions
 from ladderband.usecases.limits import Limits
 

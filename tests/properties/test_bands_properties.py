@@ -16,7 +16,8 @@ from ladderband.numerics.energy_tails import energy_range
 from ladderband.numerics.line_shape import kink_correction
 from ladderband.numerics.moments import line_moments
 from ladderband.numerics.transition import Mode, Moment, Transition
-from ladderband.usecases.bands import BandsQuestion, LineShape, Species, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsQuestion, LineShape, Species
 from ladderband.usecases.limits import Limits
 
 NEVER = Deadline.none()

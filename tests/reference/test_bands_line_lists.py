@@ -18,7 +18,8 @@ from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.axis import Axis
 from ladderband.numerics.correlation import coupled_modes
 from ladderband.numerics.transition import Mode, Moment, Transition
-from ladderband.usecases.bands import BandsQuestion, LineShape, Species, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsQuestion, LineShape, Species
 from ladderband.usecases.limits import Limits
 
 TEMPERATURES = [0.0, 77.0, 300.0, 600.0]

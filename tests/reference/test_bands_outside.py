@@ -15,7 +15,8 @@ from ladderband.numerics.correlation import correlation_function, coupled_modes,
 from ladderband.numerics.line_shape import Bath
 from ladderband.numerics.transition import Mode, Moment, Transition
 from ladderband.numerics.units import BOLTZMANN_CM1_K
-from ladderband.usecases.bands import BandsQuestion, LineShape, Species, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsQuestion, LineShape, Species
 from ladderband.usecases.limits import Limits
 
 NEVER = Deadline.none()

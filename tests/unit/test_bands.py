@@ -14,7 +14,8 @@ from ladderband.numerics.axis import Axis
 from ladderband.numerics.errors import DeadlineExceeded, DomainError
 from ladderband.numerics.transition import Mode, Moment, Transition
 from ladderband.usecases import bands as module
-from ladderband.usecases.bands import BandsQuestion, LineShape, Species, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsQuestion, LineShape, Species
 from ladderband.usecases.kept_transitions import KeptTransition, KeptTransitions
 from ladderband.usecases.limits import CostLimitExceeded, Limits
 
@@ -182,8 +183,10 @@ def test_deadline_stops_the_work():
 
 
 def test_labels_are_the_strongest_lines_on_the_axis():
+    from ladderband.numerics.warm import warm
     from ladderband.usecases.lines import LinesQuestion, lines
 
+    warm()  # a first compilation takes longer than labels may
     band = ask(label_lines=5, axis=Axis("eV", np.linspace(2.4, 2.7, 50))).bands[0]
     (found,) = band.lines
     low, high = 2.4 * 8065.54394, 2.7 * 8065.54394

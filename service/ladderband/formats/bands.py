@@ -16,7 +16,7 @@ from ladderband.formats.npy import npy_body
 from ladderband.formats.plots import labelled, quanta_text
 from ladderband.formats.sheet import Sheet
 from ladderband.numerics.axis import in_unit
-from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion
+from ladderband.usecases.bands_question import Band, BandsAnswer, BandsQuestion
 
 _AXIS_NAMES = {
     "cm-1": "wavenumber / cm⁻¹",

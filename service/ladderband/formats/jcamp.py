@@ -13,7 +13,7 @@ import numpy as np
 
 from ladderband.formats.sheet import Sheet
 from ladderband.numerics.transition import Floats
-from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion
+from ladderband.usecases.bands_question import Band, BandsAnswer, BandsQuestion
 
 X_UNITS = {"cm-1": "1/CM", "nm": "NANOMETERS", "eV": "ELECTRONVOLTS", "THz": "TERAHERTZ"}
 DATA_TYPES = {

@@ -30,7 +30,7 @@ from ladderband.numerics.correlation import CorrelationFunction, exact_step
 from ladderband.numerics.energy_tails import EnergyRange
 from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.line_shape import FIT_ORDER, FIT_REACH, Broadening, kink_correction
-from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 LAGRANGE = 16

@@ -15,8 +15,9 @@ from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.balls import ExactPair, ball_table, working_precision
 from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.grid import grid_tables
-from ladderband.numerics.ladder import UNIT_ROUNDOFF, ladder_tables, pair_coefficients
+from ladderband.numerics.ladder import ladder_tables, pair_coefficients
 from ladderband.numerics.oscillators import OscillatorColumns
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 SMALLEST_TOLERANCE = 2.0 * UNIT_ROUNDOFF

@@ -21,7 +21,7 @@ from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.mixed_modes import BlockValues, ModeBlock, block_values
 from ladderband.numerics.mode_blocks import BlockIndices, mode_blocks
-from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.tangent_kernel import Complexes
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.uncoupled_modes import UncoupledModes, uncoupled_values

@@ -27,7 +27,7 @@ from scipy import linalg
 from ladderband.numerics.correlation import CoupledModes
 from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.mixed_modes import ModeBlock
-from ladderband.numerics.symmetric_factor import gamma
+from ladderband.numerics.rounding import gamma
 from ladderband.numerics.transition import Floats
 from ladderband.numerics.uncoupled_modes import UncoupledModes
 

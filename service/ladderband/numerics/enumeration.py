@@ -22,12 +22,12 @@ from numpy.typing import NDArray
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.certified_generator import ENTRY_ERROR, certified_thermal_generator
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.line_list import Quanta
 from ladderband.numerics.marginals import gaussian_modes, marginal
 from ladderband.numerics.progression import thermal_populations
 from ladderband.numerics.quanta_lists import COST_UNIT, QuantaPairs, quanta_pairs
 from ladderband.numerics.quanta_table import Ladder, QuantaTable, amplitude_table
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.units import boltzmann_exponent
 

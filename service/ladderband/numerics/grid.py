@@ -24,7 +24,8 @@ import numpy as np
 from numba import njit
 
 from ladderband.numerics.hermite import PEAK, fill_hermite, forbidden_table, log_tail, reach
-from ladderband.numerics.ladder import UNIT_ROUNDOFF, PairCoefficients
+from ladderband.numerics.ladder import PairCoefficients
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 BLOCK = 512

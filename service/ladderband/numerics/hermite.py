@@ -23,7 +23,7 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 PEAK = 0.7511255444649425

@@ -33,9 +33,9 @@ import numpy as np
 from numba import njit
 
 from ladderband.numerics.oscillators import OscillatorColumns, exact
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
-UNIT_ROUNDOFF = 2.0**-53
 ROUNDINGS = 28
 """Roundings on the longest path to an element: 16 in a coefficient, 2 square roots, 3 products, 4
 sums, 2 in the division by v + n; one more covers second order."""

@@ -12,10 +12,10 @@ from scipy.signal import fftconvolve
 
 from ladderband.numerics.accuracy import Accuracy, Completeness, Deadline
 from ladderband.numerics.enumeration import BlockLines, Places, enumerate_block
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.line_list import LineList, Quanta
 from ladderband.numerics.mode_blocks import BlockIndices, block_transition, mode_blocks
 from ladderband.numerics.progression import ModeSticks, complete_mode_sticks
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Transition
 
 CHUNK = 1 << 16

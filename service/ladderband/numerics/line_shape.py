@@ -23,7 +23,7 @@ import numpy as np
 from scipy import special
 
 from ladderband.numerics.errors import DomainError
-from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.tangent_kernel import Complexes
 from ladderband.numerics.transition import Floats
 from ladderband.numerics.units import BOLTZMANN_CM1_K

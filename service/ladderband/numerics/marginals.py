@@ -28,7 +28,7 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Transition
 from ladderband.numerics.units import boltzmann_exponent
 

@@ -48,7 +48,8 @@ import numpy as np
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.generator import overlap_generator
-from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF, factor_rounding, gamma
+from ladderband.numerics.rounding import UNIT_ROUNDOFF, gamma
+from ladderband.numerics.symmetric_factor import factor_rounding
 from ladderband.numerics.tangent_kernel import (
     ALPHA,
     CONSTANTS,

@@ -10,8 +10,8 @@ import numpy as np
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.certificate import certified_tables
 from ladderband.numerics.hermite import reach
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.oscillators import one_pair
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Mode
 from ladderband.numerics.units import boltzmann_exponent
 

@@ -41,8 +41,8 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
 from ladderband.numerics.quanta_lists import QuantaPairs, lower_neighbours
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 THREADED_FROM = 30_000

@@ -28,14 +28,8 @@ import math
 
 from numba import njit
 
+from ladderband.numerics.rounding import gamma
 from ladderband.numerics.transition import Floats
-
-UNIT_ROUNDOFF = 2.0**-53
-
-
-def gamma(operations: float) -> float:
-    """m u / (1 - m u): the relative error of m roundings in a row."""
-    return operations * UNIT_ROUNDOFF / (1.0 - operations * UNIT_ROUNDOFF)
 
 
 def factor_rounding(order: int) -> float:

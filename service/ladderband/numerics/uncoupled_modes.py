@@ -31,7 +31,7 @@ from numba import njit
 from ladderband.numerics.accuracy import Deadline
 from ladderband.numerics.errors import PrecisionNotReached
 from ladderband.numerics.mixed_modes import BlockValues
-from ladderband.numerics.symmetric_factor import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
 FINE = 64

@@ -34,7 +34,7 @@ from ladderband.schemas.fields import (
 from ladderband.schemas.line_list import LineColumnsSchema, line_columns
 from ladderband.schemas.line_shape import LineShapeSchema, line_shape_of
 from ladderband.schemas.transition import TransitionSchema
-from ladderband.usecases.bands import Band, BandsAnswer, BandsQuestion, Species
+from ladderband.usecases.bands_question import Band, BandsAnswer, BandsQuestion, Species
 
 MAX_SPECIES = 20
 MAX_TEMPERATURES = 50

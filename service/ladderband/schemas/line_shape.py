@@ -11,7 +11,7 @@ from ladderband.numerics.line_shape import Bath, InstrumentFunction
 from ladderband.schemas import ranges
 from ladderband.schemas.base import StrictSchema
 from ladderband.schemas.fields import Choice, Complaint, Number, Numbers, Part
-from ladderband.usecases.bands import LineShape
+from ladderband.usecases.bands_question import LineShape
 
 _WIDTH = ranges.Range(0.0, 1e5, low_open=True)
 

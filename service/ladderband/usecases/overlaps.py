@@ -23,10 +23,11 @@ from ladderband.numerics.decimal_tables import (
 )
 from ladderband.numerics.decimals import Decimal
 from ladderband.numerics.grid import grid_points
-from ladderband.numerics.ladder import UNIT_ROUNDOFF, pair_coefficients
+from ladderband.numerics.ladder import pair_coefficients
 from ladderband.numerics.matrix_elements import Operator, float_matrix_elements
 from ladderband.numerics.oscillators import OscillatorColumns, rounded
 from ladderband.numerics.progression import thermal_populations
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 from ladderband.usecases.limits import Limits
 

@@ -10,7 +10,7 @@ import numpy as np
 from ladderband.numerics.accuracy import Accuracy, Deadline
 from ladderband.numerics.errors import DomainError
 from ladderband.numerics.hermite import PEAK, hermite_functions, reach
-from ladderband.numerics.ladder import UNIT_ROUNDOFF
+from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats, Mode
 from ladderband.usecases.limits import Limits
 

@@ -6,7 +6,8 @@ from ladderband.formats.bands import band_plot, bands_csv, bands_npy
 from ladderband.formats.jcamp import bands_jcamp
 from ladderband.formats.look import png, svg
 from ladderband.schemas.bands import BandsRequest, BandsResponse, bands_members
-from ladderband.usecases.bands import BandsAnswer, BandsQuestion, bands, estimate_seconds
+from ladderband.usecases.bands import bands, estimate_seconds
+from ladderband.usecases.bands_question import BandsAnswer, BandsQuestion
 from ladderband.web.resource import Resource
 
 DYE = {

@@ -16,7 +16,8 @@ from ladderband.formats.bands import band_plot
 from ladderband.formats.look import png
 from ladderband.formats.sheet import Sheet
 from ladderband.numerics.accuracy import Deadline
-from ladderband.usecases.bands import BandsAnswer, bands
+from ladderband.usecases.bands import bands
+from ladderband.usecases.bands_question import BandsAnswer
 from ladderband.usecases.limits import Limits
 from ladderband.web.bands import BANDS
 from ladderband.web.pages import guarded
