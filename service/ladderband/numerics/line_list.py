@@ -11,6 +11,7 @@ from ladderband.numerics.accuracy import Accuracy, Completeness
 from ladderband.numerics.transition import Floats
 
 Quanta = NDArray[np.int32]
+_ORIGIN = "0^0_0"
 
 
 @dataclass(frozen=True)
@@ -52,9 +53,12 @@ def assignments(v_initial: Quanta, v_final: Quanta) -> list[str]:
     of one (common practice in vibronic spectroscopy; modes count from 1). A line without any quanta
     is ``0^0_0``, the 0-0 line.
     """
+    if v_initial.shape[1] == 1:  # a progression: most of the time would go into finding the mode
+        pairs = zip(v_final[:, 0].tolist(), v_initial[:, 0].tolist(), strict=True)
+        return [f"1^{n}_{v}" if n or v else _ORIGIN for n, v in pairs]
     row, mode = np.nonzero(v_initial | v_final)
     quanta = (mode + 1).tolist(), v_final[row, mode].tolist(), v_initial[row, mode].tolist()
     parts = [f"{k}^{n}_{v}" for k, n, v in zip(*quanta, strict=True)]
     ends = np.cumsum(np.bincount(row, minlength=len(v_final))).tolist()
     starts = [0, *ends]
-    return [" ".join(parts[start:end]) or "0^0_0" for start, end in zip(starts, ends, strict=False)]
+    return [" ".join(parts[start:end]) or _ORIGIN for start, end in zip(starts, ends, strict=False)]
