@@ -138,3 +138,20 @@ def test_a_mode_without_any_intensity_in_range_gives_no_lines(quanta: int) -> No
     )
     assert lines.completeness.missing_at_most >= 1.0 - 1e-9
     assert np.all(lines.intensity < 1e-20)
+
+
+@pytest.mark.parametrize("process", ["absorption", "emission"])
+def test_a_mode_alone_gives_what_it_gives_beside_one_that_does_nothing(process: str) -> None:
+    """The short way of one mode and the products of several must list the same lines."""
+    options = {"process": process, "origin_cm1": 2e4, "threshold": 1e-4, "v_final_max": 30}
+    mode, idle = Mode(310.0, 270.0, 1.7), Mode(3000.0, 3000.0, 0.0)  # idle: 2e-5 are hot
+    for max_lines in (1000, 12):
+        chosen = {"temperature_k": 400.0, "v_initial_max": 9, "max_lines": max_lines, **options}
+        alone, both = ask(mode, **chosen), ask(mode, idle, **chosen)
+        limit = alone.accuracy.bound + both.accuracy.bound + 1e-4 * alone.intensity.max()
+        assert len(alone) >= 12
+        assert not both.v_final[:, 1].any()
+        assert np.abs(alone.intensity - both.intensity).max() <= limit
+        assert np.array_equal(alone.v_initial[:, 0], both.v_initial[:, 0])
+        assert np.array_equal(alone.v_final[:, 0], both.v_final[:, 0])
+        assert np.array_equal(alone.position_cm1, both.position_cm1)

@@ -85,7 +85,7 @@ def certified_tables(
         bounds = np.full(len(pairs), np.inf)
     else:
         tables, bounds = ladder_tables(coefficients, v_initial_max, v_final_max)
-    missed = np.flatnonzero(bounds > tolerance)
+    (missed,) = (bounds > tolerance).nonzero()
     for begin in range(0, len(missed), 64):  # the deadline is seen between chunks
         deadline.check()
         grid_tables(coefficients, missed[begin : begin + 64], tables, bounds, tolerance)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -71,6 +72,8 @@ def uncoupled_lines(
 
     Rising position first.
     """
+    if len(sticks) == 1:
+        return _one_mode_lines(transition, sticks[0], threshold, max_lines)
     parts = [_of_sticks(mode) for mode in sticks]
     joint = _products(parts, threshold, deadline)
     kept = _strongest(joint.intensity, max_lines)
@@ -79,6 +82,30 @@ def uncoupled_lines(
     position = positions(transition, v, n)
     order = np.lexsort((-joint.intensity[kept], position))
     return _line_list(parts, joint, kept[order], (position[order], v[order], n[order]))
+
+
+def _one_mode_lines(
+    transition: Transition, sticks: ModeSticks, threshold: float, max_lines: int
+) -> LineList:
+    """The same for one mode, the commonest question, without the products: a third of the time."""
+    mode, weights = transition.modes[0], sticks.weights
+    v, n = np.nonzero(weights >= max(threshold * float(weights.max()), 5e-324))
+    intensity = weights[v, n]
+    if len(intensity) > max_lines:
+        kept = _strongest(intensity, max_lines)
+        v, n, intensity = v[kept], n[kept], intensity[kept]
+    shift = n * mode.wavenumber_final_cm1 - v * mode.wavenumber_initial_cm1
+    position = transition.origin_cm1 + transition.direction * shift
+    order = np.lexsort((-intensity, position))
+    intensity = intensity[order]
+    return LineList(
+        position_cm1=position[order],
+        intensity=intensity,
+        v_initial=v[order, None].astype(np.int32),
+        v_final=n[order, None].astype(np.int32),
+        completeness=_completeness(intensity, _sum_error([sticks])),
+        accuracy=Accuracy(sticks.bound if len(intensity) else 0.0, "proven", sticks.route),
+    )
 
 
 def _strongest(intensity: Floats, count: int) -> Places:
@@ -144,7 +171,7 @@ def transition_lines(
     )
 
 
-def _sum_error(parts: list[BlockLines]) -> float:
+def _sum_error(parts: Sequence[BlockLines | ModeSticks]) -> float:
     """Sum of |product - true| over all joint lines: prod(1 + e_b) - 1."""
     return 1.001 * (math.prod(1.0 + part.sum_bound for part in parts) - 1.0) + 1e-15
 
