@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import io
+import itertools
 import xml.etree.ElementTree as ElementTree
 
 import numpy as np
 import pytest
 from matplotlib import image
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
 
 from ladderband.formats.look import LOOKS, png, svg
 from ladderband.formats.plots import overlap_plot, stick_plot, wavefunction_plot
@@ -96,3 +99,35 @@ def test_smallest_and_largest_size(size):
     plot, (question, answer) = CASES["wavefunctions"]
     sheet = Sheet("test", "0123", width=size[0], height=size[1], title="t")
     ElementTree.fromstring(svg(plot)(sheet, question, answer))
+
+
+@pytest.mark.parametrize("width", [300, 760, 2000])
+@pytest.mark.parametrize("name", ["sticks", "large table", "wavefunctions"])
+def test_words_and_figures_stay_inside_the_picture(name, width):
+    plot, (question, answer) = CASES[name]
+    sheet = Sheet("test", "0123", width=width, height=max(200, width // 2))
+    pixels = image.imread(io.BytesIO(png(plot)(sheet, question, answer)))
+    edges = (pixels[0], pixels[-1], pixels[:, 0], pixels[:, -1])
+    assert all((edge == pixels[0, 0]).all() for edge in edges)
+
+
+def test_labels_do_not_overlap():
+    figure = Figure(figsize=(4, 3), dpi=96)
+    stick_plot(None, line_list(300))(figure, LOOKS["light"])
+    canvas = FigureCanvasAgg(figure)
+    canvas.draw()
+    boxes = [text.get_window_extent(canvas.get_renderer()) for text in figure.axes[0].texts]
+    assert len(boxes) > 2
+    assert not [(a, b) for a, b in itertools.combinations(boxes, 2) if a.overlaps(b)]
+
+
+def test_long_titles_are_wrapped_and_shortened():
+    plot, (question, answer) = CASES["sticks"]
+    short, long = (
+        image.imread(
+            io.BytesIO(png(plot)(Sheet("t", "0", title=text, width=300), question, answer))
+        )
+        for text in ("word", "word " * 40)
+    )
+    assert (long[:, 295:] == long[0, 0]).all()
+    assert not (short == long).all()

@@ -13,6 +13,7 @@ from ladderband.web.desk import Desk
 from ladderband.web.desk import install as install_desk
 from ladderband.web.resource import blueprint_of
 from ladderband.web.resources import RESOURCES
+from ladderband.web.reuse import KeptPictures
 
 
 def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Flask:
@@ -27,6 +28,7 @@ def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Fl
     app.config["READY"] = threading.Event()
     app.config["READY"].set()
     app.config["DESK"] = desk
+    app.config["PICTURES"] = KeptPictures()
     problems.install(app)
     operations.install(app, settings.log_requests)
     install_desk(app)

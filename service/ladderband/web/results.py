@@ -24,6 +24,7 @@ from ladderband.web.desk import Desk
 from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
 from ladderband.web.resource import Body, Resource, tag_of
 from ladderband.web.resources import RESOURCES
+from ladderband.web.reuse import allow_reuse
 
 KEPT_S = 6 * 3600.0
 """Rendered files are only a cache; older ones are removed when a new one is made."""
@@ -90,9 +91,7 @@ def _sent(desk: Desk, tag: str, name: str, render: Any) -> Response:
     response.headers["Content-Type"] = MEDIA_TYPES[name]
     response.headers.pop("Last-Modified", None)  # of the cache file, which says nothing
     response.headers.pop("Content-Disposition", None)
-    response.headers["Vary"] = "Accept"
-    response.headers["Cache-Control"] = "private, max-age=0, must-revalidate"
-    return response
+    return allow_reuse(response)
 
 
 def _write(folder: Path, path: Path, body: Body) -> None:
