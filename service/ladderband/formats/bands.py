@@ -27,7 +27,7 @@ _AXIS_NAMES = {
 _SCALE_NAMES = {
     "relative": "relative intensity",
     "unit_area": "intensity, unit area",
-    "molar_absorption_coefficient": "molar absorption coefficient / L mol$^{-1}$ cm⁻¹",
+    "molar_absorption_coefficient": "molar absorption coefficient / L mol⁻¹ cm⁻¹",
     "cross_section": "cross-section / cm²",
     "photon_rate": "photon rate / s⁻¹ per {axis}",
     "radiated_power": "radiated power / W per {axis}",

@@ -139,6 +139,7 @@ def _arrange(figure: Figure, head: float) -> None:
     figure.subplots_adjust(top=top, bottom=bottom, hspace=2 * _GAP / ((top - bottom) * height))
     left, right = (0.0, 0.0) if figure.axes else (_USUAL_LEFT, 0.0)
     for ax in figure.axes:
+        _fold(ax)
         with_words = ax.yaxis.get_tightbbox(_RULER)
         if with_words is not None:
             left = max(left, ax.bbox.x0 - with_words.x0)
@@ -146,6 +147,13 @@ def _arrange(figure: Figure, head: float) -> None:
     figure.subplots_adjust(
         left=min(0.45, (left + _PAD) / width), right=max(0.55, 1 - max(right + _PAD, _SIDE) / width)
     )
+
+
+def _fold(ax: Axes) -> None:
+    """Put the unit of a label that is longer than its axis on a line of its own."""
+    label = ax.yaxis.label
+    if label.get_window_extent(_RULER).height > ax.bbox.height:
+        label.set_text(label.get_text().replace(" / ", "\n/ "))
 
 
 def _plain(text: str) -> str:

@@ -21,7 +21,7 @@ MAX_LABELS = 24
 CHARACTER_PX, LABEL_HEIGHT_PX = 6.5, 13.0  # of a label
 MAX_STICKS = 4000
 MAX_CELLS = 400_000
-MAX_WRITTEN = 12
+CELL_PX = (36.0, 16.0)  # least size of a cell in which its number is written
 MAX_LEVELS = 40  # of each state; more cannot be told apart on a plot, and each costs time
 MAX_CURVE_POINTS = 800
 
@@ -145,7 +145,8 @@ def overlap_plot(question: OverlapsQuestion, answer: OverlapsAnswer) -> Draw:
         bar.outline.set_visible(False)
         bar.ax.tick_params(colors=look.quiet, labelsize=8.5, length=0)
         bar.set_label("Franck-Condon factor", color=look.ink, fontsize=9.5)
-        if max(table.shape) <= MAX_WRITTEN:
+        rows, columns = table.shape
+        if ax.bbox.width >= columns * CELL_PX[0] and ax.bbox.height >= rows * CELL_PX[1]:
             _write_cells(ax, table, look)
 
     return draw
