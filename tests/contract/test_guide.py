@@ -21,6 +21,7 @@ from ladderband.web.guide.source import (
     block,
     blocks,
     contents,
+    markdown,
     names,
     text,
 )
@@ -142,6 +143,28 @@ def test_no_result_is_typed_into_a_text(slug):
     assert not re.findall(r"\de[-+]?\d", prose)
 
 
+def fences(slug, kind):
+    return [
+        token.content
+        for token in markdown().parse(text(slug))
+        if token.type == "fence" and token.info == kind
+    ]
+
+
+def test_the_refusal_on_the_page_is_the_one_the_service_sends(client):
+    (command,), (shown,) = fences("errors", "sh"), fences("errors", "json")
+    body = json.loads(re.search("'({.*})'", command)[1])
+    answer = client.post("/v1/progressions", json=body).json
+    assert {name: answer[name] for name in json.loads(shown)} == json.loads(shown)
+
+
+def test_addresses_in_the_page_for_dashboards_are_answered(client):
+    (example,) = fences("pictures", "html")
+    found = re.findall(f'"{ADDRESS}([^"]*)"', example)
+    assert len(found) == 2
+    assert all(client.get(link).mimetype == "image/svg+xml" for link in found)
+
+
 def test_pages_show_the_numbers_of_the_answers(client):
     answer = answers("overlaps")["pair"].document
     page = client.get("/docs/overlaps").text
@@ -226,6 +249,7 @@ def test_numbers_are_written_as_in_print():
     roots = {"a": {"list": [3.0, 4.5e-13], "unit": "L mol^-1 cm^-1"}}
     assert written(roots, "a/list/1", ".1e") == "4.5×10⁻¹³"
     assert written(roots, "a/list/max", ".1f") == "3.0"
+    assert written(roots, "a/list/0*-1", ".1f") == "−3.0"
     assert written(roots, "a/list/0*1e3", ",.0f") == "3,000"
     assert written(roots, "a/unit", "") == "L mol⁻¹ cm⁻¹"
 

@@ -102,7 +102,7 @@ class Resource(Generic[Q, A]):
         digest = g.digest = self.digest(loaded.question)
         tag = tag_of(digest, name, view)
         if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
-            return _not_modified(tag)
+            return not_modified(tag)
         pictures: KeptPictures | None = current_app.config["PICTURES"] if name in PICTURES else None
         if pictures is not None and (kept := pictures.find(tag)) is not None:
             return _response(kept, name, tag)
@@ -166,7 +166,8 @@ def tag_of(digest: str, name: str, view: dict[str, Any]) -> str:
     return digest if name == "json" else f"{digest}-{name}-{request_digest(name, view)[:16]}"
 
 
-def _not_modified(tag: str) -> Response:
+def not_modified(tag: str) -> Response:
+    """304, or the refusal of a POST, for a client that holds the answer already."""
     if request.method not in ("GET", "HEAD"):  # RFC 9110, section 13.1.2
         raise AlreadyHeld("If-None-Match names the answer to this request.", etag=tag)
     response = Response(status=304)

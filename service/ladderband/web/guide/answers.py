@@ -140,5 +140,6 @@ def written(roots: Mapping[str, Any], pointer: str, form: str) -> str:
     except LookupError as error:
         raise SourceError(f"{{{{{pointer}}}}}: {error.args[0]}") from error
     number = format(value * float(factor) if factor else value, form)
+    number = re.sub(r"^-(?=\d)", "−", number)
     number = _POWER.sub(lambda match: f"×10^{match[1].strip('+')}{match[2]}", number)
     return _UNIT_POWER.sub(lambda match: match[1].translate(_RAISED), number)

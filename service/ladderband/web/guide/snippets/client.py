@@ -14,8 +14,7 @@ def ask(path: str, body: object) -> bytes:
     request = urllib.request.Request(URL + path, json.dumps(body).encode(), headers)
     try:
         with urllib.request.urlopen(request) as answer:
-            data: bytes = answer.read()
-            return data
+            return bytes(answer.read())
     except urllib.error.HTTPError as error:
         raise SystemExit(error.read().decode()) from None
 
