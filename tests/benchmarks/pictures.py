@@ -1,9 +1,10 @@
-"""Time of a progression as a picture, as a browser sees it.
+"""Time of a progression as a picture and of the guide's pages, as a browser sees them.
 
     python tests/benchmarks/pictures.py
 
 One web process of the whole service over HTTP. Cold: no picture of that progression was drawn
-before. Kept: the same again, from the process. Held: the browser has it and asks (304).
+before. Kept: the same again, from the process. Held: the browser has it and asks (304). Pages: the
+slowest ones, each computed at its first visit.
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ from pathlib import Path
 from urllib.parse import urlsplit
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
+from ladderband.web.guide.source import names
 from live_service import serving
 
 ROUNDS = 40
@@ -40,8 +42,19 @@ def row(name, times):
     print(f"{name:28}{min(times):9.1f}{statistics.median(times):9.1f}{max(times):9.1f}")
 
 
+def pages():
+    """First and later visits of every page, in a fresh process."""
+    with serving("--workers", "1") as server:
+        connection = http.client.HTTPConnection(urlsplit(server.url).netloc)
+        first = {slug: timed(connection, f"/docs/{slug}")[0] for slug in names()}
+        row("all pages, later visits", [timed(connection, f"/docs/{slug}")[0] for slug in names()])
+    for slug in sorted(first, key=first.__getitem__)[-4:]:
+        row(f"page {slug}, first visit", [first[slug]])
+
+
 def main():
     print(f"{'ms':28}{'min':>9}{'median':>9}{'max':>9}")
+    pages()
     for kind in ("svg", "png"):
         with serving("--workers", "1") as server:
             connection = http.client.HTTPConnection(urlsplit(server.url).netloc)
