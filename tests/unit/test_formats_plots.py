@@ -12,6 +12,7 @@ from matplotlib import image
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 
+from ladderband.formats.bands import band_plot
 from ladderband.formats.look import LOOKS, png, svg
 from ladderband.formats.plots import overlap_plot, stick_plot, wavefunction_plot
 from ladderband.formats.sheet import Sheet
@@ -19,9 +20,11 @@ from ladderband.numerics.accuracy import Accuracy, Completeness, Deadline
 from ladderband.numerics.line_list import LineList
 from ladderband.numerics.oscillators import one_pair
 from ladderband.numerics.transition import Mode
+from ladderband.usecases.bands import bands
 from ladderband.usecases.limits import Limits
 from ladderband.usecases.overlaps import OverlapsQuestion, overlaps
 from ladderband.usecases.wavefunctions import WavefunctionsQuestion, wavefunctions
+from ladderband.web.bands import BANDS
 
 
 def line_list(count):
@@ -46,6 +49,11 @@ def wave_answer(v_max):
     return question, wavefunctions(question, Limits(), Deadline.none())
 
 
+def band_answer(name):
+    question = BANDS.request.read(dict(BANDS.examples[name])).question
+    return question, bands(question, Limits(), Deadline.none())
+
+
 CASES = {
     "sticks": (stick_plot, (None, line_list(30))),
     "one stick": (stick_plot, (None, line_list(1))),
@@ -57,6 +65,8 @@ CASES = {
     "table of strings": (overlap_plot, overlap_answer(2, digits=30)),
     "wavefunctions": (wavefunction_plot, wave_answer(4)),
     "very many levels": (wavefunction_plot, wave_answer(200)),
+    "long label": (band_plot, band_answer("dye-at-room-temperature")),
+    "labelled band": (band_plot, band_answer("cold-emission")),
     "one level": (wavefunction_plot, wave_answer(0)),
 }
 
@@ -102,7 +112,7 @@ def test_smallest_and_largest_size(size):
 
 
 @pytest.mark.parametrize("width", [300, 760, 2000])
-@pytest.mark.parametrize("name", ["sticks", "large table", "wavefunctions"])
+@pytest.mark.parametrize("name", ["sticks", "large table", "wavefunctions", "long label"])
 def test_words_and_figures_stay_inside_the_picture(name, width):
     plot, (question, answer) = CASES[name]
     sheet = Sheet("test", "0123", width=width, height=max(200, width // 2))

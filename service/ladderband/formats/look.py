@@ -42,7 +42,7 @@ _RULER = RendererAgg(1, 1, PIXELS_PER_INCH)  # type: ignore[no-untyped-call]
 _FOOT, _HEAD, _SIDE, _GAP, _PAD = 46.0, 20.0, 24.0, 14.0, 8.0
 _TITLE_LINE, _TITLE_CHARACTER = 19.0, 9.5
 _TITLE_LINES = 3
-_TICK = 68.0
+_TICK, _LABEL_CHARACTER = 68.0, 7.6
 _USUAL_LEFT = 56.0
 
 
@@ -150,10 +150,12 @@ def _arrange(figure: Figure, head: float) -> None:
 
 
 def _fold(ax: Axes) -> None:
-    """Put the unit of a label that is longer than its axis on a line of its own."""
+    """Break a label that is longer than its axis; the stroke stays with the unit."""
     label = ax.yaxis.label
     if label.get_window_extent(_RULER).height > ax.bbox.height:
-        label.set_text(label.get_text().replace(" / ", "\n/ "))
+        columns = max(8, int(ax.bbox.height / _LABEL_CHARACTER))
+        words = label.get_text().replace(" / ", " /\N{NO-BREAK SPACE}")
+        label.set_text("\n".join(textwrap.wrap(words, columns)))
 
 
 def _plain(text: str) -> str:

@@ -23,6 +23,8 @@ from ladderband.usecases.limits import Limits
 from ladderband.usecases.mode_maps import MAX_ATOMS
 from ladderband.usecases.progressions import MAX_MODES
 from ladderband.web.guide.source import Block, SourceError, blocks, text
+from ladderband.web.jobs import SILENCE_S, STREAM_S
+from ladderband.web.problems import MAX_ERRORS
 from ladderband.web.resource import NO_VIEW, Resource
 from ladderband.web.resources import RESOURCES
 from ladderband.web.reuse import MAX_AGE_S
@@ -41,6 +43,9 @@ MOST = {
     "species": MAX_SPECIES,
     "atoms": MAX_ATOMS,
     "max_age_s": MAX_AGE_S,
+    "complaints": MAX_ERRORS,
+    "stream_s": STREAM_S,
+    "silence_s": SILENCE_S,
 }
 """Further limits for the texts."""
 

@@ -123,15 +123,21 @@ def pretty(value: Any, indent: int = 0, name: str = "") -> str:
         parts = [pretty(of, indent + 2, f"{json.dumps(key)}: ") for key, of in value.items()]
     else:
         parts = [pretty(entry, indent + 2) for entry in value]
+    lines = _packed(parts, WIDTH - indent - 3)
+    opening, closing = "{}" if isinstance(value, dict) else "[]"
+    return f"{name}{opening}{inner}{f',{inner}'.join(lines)}\n{' ' * indent}{closing}"
+
+
+def _packed(parts: Sequence[str], width: int) -> list[str]:
+    """Parts of one line joined to lines of at most ``width``; longer parts stay alone."""
     lines = [parts[0]]
     for part in parts[1:]:
         joined = f"{lines[-1]}, {part}"
-        if "\n" in joined or indent + 3 + len(joined) > WIDTH:
+        if "\n" in joined or len(joined) > width:
             lines.append(part)
         else:
             lines[-1] = joined
-    opening, closing = "{}" if isinstance(value, dict) else "[]"
-    return f"{name}{opening}{inner}{f',{inner}'.join(lines)}\n{' ' * indent}{closing}"
+    return lines
 
 
 def _rows(columns: Mapping[str, Sequence[Any]]) -> str:
