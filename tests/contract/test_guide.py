@@ -76,6 +76,21 @@ def test_every_text_is_linked_once_and_every_link_has_a_text():
     assert {resource.name for resource in RESOURCES} <= set(linked)
 
 
+@pytest.mark.parametrize("path", ["/look.css", "/docs/page.css", "/openapi.json"])
+def test_files_are_asked_about_and_not_sent_again(path, client):
+    found = client.get(path)
+    assert found.headers["Cache-Control"] == "public, max-age=0, must-revalidate"
+    held = client.get(path, headers={"If-None-Match": found.headers["ETag"]})
+    assert (held.status_code, held.data) == (304, b"")
+
+
+def test_the_stylesheet_takes_its_colours_from_the_plots(client):
+    style = client.get("/docs/page.css").text
+    assert not re.search(r"#[0-9a-f]{3,8}\b|rgb|hsl", style)
+    known = set(re.findall(r"--[a-z]+(?=:)", client.get("/look.css").text))
+    assert set(re.findall(r"var\((--[a-z]+)\)", style)) <= known
+
+
 @pytest.mark.parametrize("slug", PAGES)
 def test_page_can_be_kept_and_needs_no_script_or_style_of_its_own(slug, client):
     page = client.get(address(slug))

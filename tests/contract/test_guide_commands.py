@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import contextlib
+import http.server
 import json
 import os
 import re
 import shutil
 import subprocess
+import threading
 import time
 
 import httpx
@@ -115,6 +118,41 @@ def test_snippet_prints_the_lines_and_saves_the_band(snippet, live_server, tmp_p
     )
     picture = (tmp_path / "band.svg").read_text()
     assert re.search(r"<svg.*</svg>\s*$", picture, re.S)
+
+
+def test_snippet_sends_its_key(snippet, live_server, tmp_path):
+    command, _ = snippet
+    with recording(live_server.url) as (url, keys):
+        done = run(command, live_server, tmp_path, LADDERBAND_URL=url, LADDERBAND_KEY="se-cret_1")
+    assert done.returncode == 0, done.stderr
+    assert keys == ["Bearer se-cret_1"] * 2
+
+
+@contextlib.contextmanager
+def recording(target):
+    """A server that passes requests on and notes the key each came with."""
+    keys = []
+
+    class Handler(http.server.BaseHTTPRequestHandler):
+        def do_POST(self):
+            keys.append(self.headers["Authorization"])
+            body = self.rfile.read(int(self.headers["Content-Length"]))
+            kind = {"Content-Type": self.headers["Content-Type"]}
+            answer = httpx.post(target + self.path, content=body, headers=kind)
+            self.send_response(answer.status_code)
+            self.send_header("Content-Length", str(len(answer.content)))
+            self.end_headers()
+            self.wfile.write(answer.content)
+
+        def log_message(self, *arguments):
+            pass
+
+    with http.server.ThreadingHTTPServer(("127.0.0.1", 0), Handler) as server:
+        thread = threading.Thread(target=server.serve_forever)
+        thread.start()
+        yield f"http://127.0.0.1:{server.server_port}", keys
+        server.shutdown()
+        thread.join()
 
 
 def test_snippet_tells_why_it_was_refused(snippet, live_server, tmp_path):

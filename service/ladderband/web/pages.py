@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import hashlib
 import html
 from functools import cache
 from pathlib import Path
 
 import flask_swagger_ui
-from flask import Blueprint, Response, abort, redirect, send_from_directory
+from flask import Blueprint, Response, abort, redirect, request, send_from_directory
 from werkzeug.wrappers import Response as WerkzeugResponse
 
 from ladderband.web.guide.frame import framed
@@ -37,15 +38,15 @@ def _description() -> bytes:
 
 
 @blueprint.get("/openapi.json")
-def openapi() -> Response:
+def openapi() -> WerkzeugResponse:
     """The OpenAPI 3.1 document."""
-    return Response(_description(), content_type="application/json")
+    return tagged(_description(), "application/json")
 
 
 @blueprint.get("/look.css")
-def look() -> Response:
+def look() -> WerkzeugResponse:
     """Colours of all pages."""
-    return guarded(Response(look_css(), content_type="text/css; charset=utf-8"))
+    return tagged(look_css().encode(), "text/css; charset=utf-8")
 
 
 @blueprint.get("/docs")
@@ -71,7 +72,7 @@ def interface_file(name: str) -> Response:
 
 
 @blueprint.get("/problems/<slug>")
-def problem(slug: str) -> Response:
+def problem(slug: str) -> WerkzeugResponse:
     """What a problem type means."""
     for known in all_problems():
         if known.slug == slug:
@@ -82,7 +83,7 @@ def problem(slug: str) -> Response:
                 '<a href="../docs/errors">How errors are told</a></p>'
             )
             text = framed(known.title, body, "", docs="../docs/")
-            return guarded(Response(text, content_type="text/html; charset=utf-8"))
+            return tagged(text.encode(), "text/html; charset=utf-8")
     abort(404)
 
 
@@ -91,3 +92,11 @@ def guarded(response: Response, policy: str = POLICY) -> Response:
     response.headers["Content-Security-Policy"] = policy
     response.headers["X-Content-Type-Options"] = "nosniff"
     return response
+
+
+def tagged(content: bytes, kind: str) -> WerkzeugResponse:
+    """A file that browsers keep and ask about: 304 when it is still the same."""
+    response = guarded(Response(content, content_type=kind))
+    response.headers["Cache-Control"] = "public, max-age=0, must-revalidate"
+    response.set_etag(hashlib.blake2b(content, digest_size=16).hexdigest())
+    return response.make_conditional(request)

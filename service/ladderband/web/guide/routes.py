@@ -2,18 +2,17 @@
 
 from __future__ import annotations
 
-import hashlib
 from functools import cache
 from pathlib import Path
 
-from flask import Blueprint, Response, abort, current_app, request
+from flask import Blueprint, abort, current_app
 from werkzeug.wrappers import Response as WerkzeugResponse
 
 from ladderband.formats.look import LOOKS
 from ladderband.web.guide.answers import SIZES, answers
 from ladderband.web.guide.render import page
 from ladderband.web.guide.source import HOME, names
-from ladderband.web.pages import guarded
+from ladderband.web.pages import tagged
 
 blueprint = Blueprint("guide", __name__)
 
@@ -58,11 +57,3 @@ def guide_picture(slug: str, name: str, theme: str, size: str) -> WerkzeugRespon
 @cache
 def _picture(slug: str, name: str, theme: str, size: str) -> bytes:
     return answers(slug)[name].picture(theme, size)
-
-
-def tagged(content: bytes, kind: str) -> WerkzeugResponse:
-    """A file that browsers keep and ask about: 304 when it is still the same."""
-    response = guarded(Response(content, content_type=kind))
-    response.headers["Cache-Control"] = "public, max-age=0, must-revalidate"
-    response.set_etag(hashlib.blake2b(content, digest_size=16).hexdigest())
-    return response.make_conditional(request)
