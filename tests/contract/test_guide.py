@@ -261,7 +261,9 @@ def test_a_pointer_to_nothing_is_refused():
 
 
 def test_numbers_are_written_as_in_print():
-    roots = {"a": {"list": [3.0, 4.5e-13], "unit": "L mol^-1 cm^-1"}}
+    roots = {"a": {"list": [3.0, 4.5e-13], "unit": "L mol^-1 cm^-1", "line": "1^2_0"}}
+    assert written(roots, "a/line", "") == "1^2_0"
+    assert written(roots, "a/list/0*1e7", ".0e") == "3×10⁷"
     assert written(roots, "a/list/1", ".1e") == "4.5×10⁻¹³"
     assert written(roots, "a/list/max", ".1f") == "3.0"
     assert written(roots, "a/list/0*-1", ".1f") == "−3.0"

@@ -31,7 +31,7 @@ from ladderband.web.reuse import MAX_AGE_S
 
 _PLACEHOLDER = re.compile(r"\{\{([^{}:]+?)(?::([^{}]*))?\}\}")
 _POWER = re.compile(r"(?<=\d)e([+-])0*(\d+)")
-_UNIT_POWER = re.compile(r"\^(-?\d+)")
+_TO_RAISE = re.compile(r"(?<=×10)\^(\d+)|\^(-\d+)")
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 _LAST: dict[str, Callable[[Any], Any]] = {"max": max, "min": min, "len": len, "sum": sum}
 
@@ -147,4 +147,4 @@ def written(roots: Mapping[str, Any], pointer: str, form: str) -> str:
     number = format(value * float(factor) if factor else value, form)
     number = re.sub(r"^-(?=\d)", "−", number)
     number = _POWER.sub(lambda match: f"×10^{match[1].strip('+')}{match[2]}", number)
-    return _UNIT_POWER.sub(lambda match: match[1].translate(_RAISED), number)
+    return _TO_RAISE.sub(lambda match: match[0][1:].translate(_RAISED), number)
