@@ -8,30 +8,21 @@ import sys
 
 import pytest
 
-from ladderband.web.description import description_json
+from ladderband.web.guide.source import SNIPPETS
 
 PACKAGE = "ladderband_generated_client"
 
 
 @pytest.fixture(scope="module")
-def generated(tmp_path_factory):
-    """The generated package, importable for the tests of this module."""
+def generated(tmp_path_factory, live_server):
+    """The generated package, importable for the tests of this module; made as the guide says."""
     folder = tmp_path_factory.mktemp("client")
-    document, config = folder / "openapi.json", folder / "config.yaml"
-    document.write_bytes(description_json())
-    config.write_text(
-        f"package_name_override: {PACKAGE}\n"
-        f"project_name_override: {PACKAGE}\n"
-        "post_hooks: []\n"
-        "content_type_overrides:\n"
-        "  application/x-npy: application/octet-stream\n"
-        "  application/x-ndjson: text/plain\n"
-        "  image/svg+xml: text/plain\n"
-        "  chemical/x-jcamp-dx: text/plain\n"
-        "  image/png: application/octet-stream\n"
-    )
-    command = [sys.executable, "-m", "openapi_python_client", "generate", "--path", str(document)]
-    command += ["--config", str(config), "--output-path", str(folder / "out"), "--meta", "none"]
+    config = folder / "config.yaml"
+    names = f"package_name_override: {PACKAGE}\nproject_name_override: {PACKAGE}\npost_hooks: []\n"
+    config.write_text(names + (SNIPPETS / "overrides.yaml").read_text())
+    command = [sys.executable, "-m", "openapi_python_client", "generate"]
+    command += ["--url", f"{live_server.url}/openapi.json", "--config", str(config)]
+    command += ["--output-path", str(folder / "out"), "--meta", "none"]
     done = subprocess.run(command, capture_output=True, text=True, cwd=folder, timeout=120)
     assert done.returncode == 0, done.stdout + done.stderr
     (folder / "out").rename(folder / PACKAGE)

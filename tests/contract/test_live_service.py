@@ -43,11 +43,12 @@ def test_is_ready_and_healthy(http_client):
 
 
 def test_documentation_page_and_its_files_come_from_the_service(http_client):
-    page = http_client.get("/docs", follow_redirects=True)
-    assert "default-src 'self'" in page.headers["Content-Security-Policy"]
-    for name in ("swagger-ui.css", "swagger-ui-bundle.js", "docs.js", "favicon-32x32.png"):
-        assert name in page.text or name == "swagger-ui.css"
-        assert http_client.get(f"/docs/{name}").status_code == 200
+    assert http_client.get("/docs", follow_redirects=True).url.path == "/docs/"
+    page = http_client.get("/docs/interface")
+    assert "default-src 'none'" in page.headers["Content-Security-Policy"]
+    for name in ("swagger-ui.css", "swagger-ui-bundle.js", "interface.js", "favicon-32x32.png"):
+        assert f"interface/{name}" in page.text
+        assert http_client.get(f"/docs/interface/{name}").status_code == 200
     assert "http://" not in page.text
     assert "https://" not in page.text
 

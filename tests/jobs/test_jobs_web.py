@@ -236,8 +236,10 @@ def test_ranges_of_a_result_can_be_fetched(service: Service) -> None:
         address, headers={"Range": "bytes=30-", "If-Range": whole.headers["ETag"]}
     )
     assert rest.data == whole.data[30:]
+    assert whole.headers["Cache-Control"] == "public, max-age=3600, must-revalidate"
     same = service.client.get(address, headers={"If-None-Match": whole.headers["ETag"]})
     assert same.status_code == 304
+    assert same.headers["Cache-Control"] == whole.headers["Cache-Control"]
     beyond = service.client.get(address, headers={"Range": "bytes=999999-"})
     assert beyond.status_code == 416
     assert beyond.json["type"].startswith("/problems/")
@@ -425,6 +427,10 @@ def test_keys_see_only_their_own_jobs_and_end_when_revoked(
         assert client.get(job["links"][path], headers=bob_head).status_code == 404
     assert client.delete(job["links"]["self"], headers=bob_head).status_code == 404
     assert client.get("/v1/jobs", headers=bob_head).json["jobs"] == []
+    query = "/v1/progressions?wavenumber_initial_cm1=992&wavenumber_final_cm1=923&huang_rhys=1.2"
+    picture = client.get(query + "&format=svg", headers=ada_head)
+    assert picture.headers["Cache-Control"].startswith("private, ")  # no proxy may pass it on
+    assert client.get(query + "&format=svg").status_code == 401
     assert ada not in str(list_keys(database))
     assert revoke_key(database, ada_info.id)
     assert not revoke_key(database, ada_info.id)

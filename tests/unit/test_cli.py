@@ -49,11 +49,11 @@ def test_settings_are_listed(capsys):
 def test_description_is_written_checked_and_cleaned(tmp_path, capsys):
     assert main(["describe", "--out", str(tmp_path)]) == 0
     assert main(["describe", "--out", str(tmp_path), "--check"]) == 0
-    (tmp_path / "examples" / "old.json").write_text("{}")
+    (tmp_path / "examples" / "bands" / "old.json").write_text("{}")
     assert main(["describe", "--out", str(tmp_path), "--check"]) == 2
     assert "ladderband describe" in capsys.readouterr().err
     assert main(["describe", "--out", str(tmp_path)]) == 0
-    assert not (tmp_path / "examples" / "old.json").exists()
+    assert not (tmp_path / "examples" / "bands" / "old.json").exists()
     (tmp_path / "openapi.json").write_text("{}")
     assert main(["describe", "--out", str(tmp_path), "--check"]) == 2
 

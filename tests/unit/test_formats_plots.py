@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 import io
+import itertools
 import xml.etree.ElementTree as ElementTree
 
 import numpy as np
 import pytest
 from matplotlib import image
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
 
+from ladderband.formats.bands import band_plot
 from ladderband.formats.look import LOOKS, png, svg
 from ladderband.formats.plots import overlap_plot, stick_plot, wavefunction_plot
 from ladderband.formats.sheet import Sheet
@@ -16,9 +20,11 @@ from ladderband.numerics.accuracy import Accuracy, Completeness, Deadline
 from ladderband.numerics.line_list import LineList
 from ladderband.numerics.oscillators import one_pair
 from ladderband.numerics.transition import Mode
+from ladderband.usecases.bands import bands
 from ladderband.usecases.limits import Limits
 from ladderband.usecases.overlaps import OverlapsQuestion, overlaps
 from ladderband.usecases.wavefunctions import WavefunctionsQuestion, wavefunctions
+from ladderband.web.bands import BANDS
 
 
 def line_list(count):
@@ -43,6 +49,11 @@ def wave_answer(v_max):
     return question, wavefunctions(question, Limits(), Deadline.none())
 
 
+def band_answer(name):
+    question = BANDS.request.read(dict(BANDS.examples[name])).question
+    return question, bands(question, Limits(), Deadline.none())
+
+
 CASES = {
     "sticks": (stick_plot, (None, line_list(30))),
     "one stick": (stick_plot, (None, line_list(1))),
@@ -54,6 +65,8 @@ CASES = {
     "table of strings": (overlap_plot, overlap_answer(2, digits=30)),
     "wavefunctions": (wavefunction_plot, wave_answer(4)),
     "very many levels": (wavefunction_plot, wave_answer(200)),
+    "long label": (band_plot, band_answer("dye-at-room-temperature")),
+    "labelled band": (band_plot, band_answer("cold-emission")),
     "one level": (wavefunction_plot, wave_answer(0)),
 }
 
@@ -96,3 +109,35 @@ def test_smallest_and_largest_size(size):
     plot, (question, answer) = CASES["wavefunctions"]
     sheet = Sheet("test", "0123", width=size[0], height=size[1], title="t")
     ElementTree.fromstring(svg(plot)(sheet, question, answer))
+
+
+@pytest.mark.parametrize("width", [300, 760, 2000])
+@pytest.mark.parametrize("name", ["sticks", "large table", "wavefunctions", "long label"])
+def test_words_and_figures_stay_inside_the_picture(name, width):
+    plot, (question, answer) = CASES[name]
+    sheet = Sheet("test", "0123", width=width, height=max(200, width // 2))
+    pixels = image.imread(io.BytesIO(png(plot)(sheet, question, answer)))
+    edges = (pixels[0], pixels[-1], pixels[:, 0], pixels[:, -1])
+    assert all((edge == pixels[0, 0]).all() for edge in edges)
+
+
+def test_labels_do_not_overlap():
+    figure = Figure(figsize=(4, 3), dpi=96)
+    stick_plot(None, line_list(300))(figure, LOOKS["light"])
+    canvas = FigureCanvasAgg(figure)
+    canvas.draw()
+    boxes = [text.get_window_extent(canvas.get_renderer()) for text in figure.axes[0].texts]
+    assert len(boxes) > 2
+    assert not [(a, b) for a, b in itertools.combinations(boxes, 2) if a.overlaps(b)]
+
+
+def test_long_titles_are_wrapped_and_shortened():
+    plot, (question, answer) = CASES["sticks"]
+    short, long = (
+        image.imread(
+            io.BytesIO(png(plot)(Sheet("t", "0", title=text, width=300), question, answer))
+        )
+        for text in ("word", "word " * 40)
+    )
+    assert (long[:, 295:] == long[0, 0]).all()
+    assert not (short == long).all()

@@ -27,7 +27,7 @@ _AXIS_NAMES = {
 _SCALE_NAMES = {
     "relative": "relative intensity",
     "unit_area": "intensity, unit area",
-    "molar_absorption_coefficient": "molar absorption coefficient / L mol$^{-1}$ cm⁻¹",
+    "molar_absorption_coefficient": "molar absorption coefficient / L mol⁻¹ cm⁻¹",
     "cross_section": "cross-section / cm²",
     "photon_rate": "photon rate / s⁻¹ per {axis}",
     "radiated_power": "radiated power / W per {axis}",
@@ -98,9 +98,13 @@ def _label_lines(ax: Axes, look: Look, answer: BandsAnswer) -> None:
     if not len(position):
         return
     ax.set_ylim(0.0, 1.16 * float(max(b.intensity.max() for b in answer.bands)))
-    for k in labelled(ax, position, height):
+
+    def name(k: int) -> str:
+        return quanta_text(found.v_initial[k], found.v_final[k])
+
+    for k in labelled(ax, position, height, name):
         ax.annotate(
-            quanta_text(found.v_initial[k], found.v_final[k]),
+            name(k),
             (position[k], height[k]),
             xytext=(0, 4),
             textcoords="offset points",

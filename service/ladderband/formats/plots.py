@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 import numpy as np
@@ -9,17 +10,18 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
-from ladderband.formats.look import PIXELS_PER_INCH, Draw, Look, axes, picture
+from ladderband.formats.look import Draw, Look, axes, picture
 from ladderband.formats.sheet import Sheet
+from ladderband.numerics.accuracy import Accuracy, Completeness
 from ladderband.numerics.line_list import LineList
 from ladderband.usecases.overlaps import OverlapsAnswer, OverlapsQuestion
 from ladderband.usecases.wavefunctions import WavefunctionsAnswer, WavefunctionsQuestion
 
 MAX_LABELS = 24
-LABEL_PX = (34.0, 13.0)  # least distance of two labels: across, up
+CHARACTER_PX, LABEL_HEIGHT_PX = 6.5, 13.0  # of a label
 MAX_STICKS = 4000
 MAX_CELLS = 400_000
-MAX_WRITTEN = 12
+CELL_PX = (36.0, 16.0)  # least size of a cell in which its number is written
 MAX_LEVELS = 40  # of each state; more cannot be told apart on a plot, and each costs time
 MAX_CURVE_POINTS = 800
 
@@ -34,14 +36,17 @@ def stick_plot(question: Any, answer: LineList) -> Draw:
         ax = axes(figure, look)
         order = np.argsort(-answer.intensity, kind="stable")[:MAX_STICKS]
         position, height = answer.position_cm1[order], answer.intensity[order]
-        ax.vlines(position, 0.0, height, color=look.first, linewidth=_stick_width(len(order)))
+        _sticks(ax, position, height, look.first)
         _frame_sticks(ax, position, height)
         ax.set_xlabel("wavenumber / cm⁻¹")
         ax.set_ylabel("relative intensity")
-        for k in labelled(ax, position, height):
-            text = quanta_text(answer.v_initial[order[k]], answer.v_final[order[k]])
+
+        def name(k: int) -> str:
+            return quanta_text(answer.v_initial[order[k]], answer.v_final[order[k]])
+
+        for k in labelled(ax, position, height, name):
             ax.annotate(
-                text,
+                name(k),
                 (position[k], height[k]),
                 xytext=(0, 3),
                 textcoords="offset points",
@@ -49,9 +54,17 @@ def stick_plot(question: Any, answer: LineList) -> Draw:
                 va="bottom",
                 fontsize=9,
                 color=look.ink,
-            ).set_in_layout(False)
+            )
 
     return draw
+
+
+def _sticks(ax: Axes, position: Any, height: Any, colour: str) -> None:
+    """All sticks as one path: a fifth of the time of an object for each."""
+    gaps = np.full(len(position), np.nan)
+    x = np.column_stack([position, position, gaps]).ravel()
+    y = np.column_stack([np.zeros(len(position)), height, gaps]).ravel()
+    ax.plot(x, y, color=colour, linewidth=_stick_width(len(position)), solid_capstyle="butt")
 
 
 def _stick_width(count: int) -> float:
@@ -60,6 +73,10 @@ def _stick_width(count: int) -> float:
 
 def _frame_sticks(ax: Axes, position: Any, height: Any) -> None:
     if not len(position):
+        ax.set_ylim(0.0, 1.0)
+        ax.set_xticks([])
+        grey = ax.xaxis.label.get_color()
+        ax.text(0.5, 0.5, "no lines", transform=ax.transAxes, ha="center", color=grey)
         return
     low, high = float(position.min()), float(position.max())
     margin = 0.04 * (high - low) or max(1.0, 0.01 * abs(low))
@@ -67,24 +84,25 @@ def _frame_sticks(ax: Axes, position: Any, height: Any) -> None:
     ax.set_ylim(0.0, 1.14 * float(height.max()))
 
 
-def labelled(ax: Axes, position: Any, height: Any) -> list[int]:
+def labelled(ax: Axes, position: Any, height: Any, name: Callable[[int], str]) -> list[int]:
     """Strongest first, those whose label has room beside the labels already placed."""
-    figure_px = ax.get_figure(root=True).get_size_inches() * PIXELS_PER_INCH  # type: ignore[union-attr]
     (x0, x1), (y0, y1) = ax.get_xlim(), ax.get_ylim()
-    px = (position - x0) / (x1 - x0) * figure_px[0]
-    py = (height - y0) / (y1 - y0) * figure_px[1]
-    placed: list[int] = []
+    px = (position - x0) / (x1 - x0) * ax.bbox.width
+    py = (height - y0) / (y1 - y0) * ax.bbox.height
+    placed: dict[int, float] = {}  # half the width of each label
     for k in range(min(len(position), 400)):
         if height[k] < 0.02 * height[0] or len(placed) == MAX_LABELS:
             break
+        half = 0.5 * (1 + len(name(k))) * CHARACTER_PX
         apart = all(
-            abs(px[k] - px[j]) > LABEL_PX[0] or abs(py[k] - py[j]) > LABEL_PX[1] for j in placed
+            abs(px[k] - px[j]) > half + other or abs(py[k] - py[j]) > LABEL_HEIGHT_PX
+            for j, other in placed.items()
         )
         # a label must not sit on a taller stick beside it either
-        taller = np.abs(px[:k] - px[k]) < 0.5 * LABEL_PX[0]
+        taller = np.abs(px[:k] - px[k]) < half
         if apart and not taller.any():
-            placed.append(k)
-    return placed
+            placed[k] = half
+    return list(placed)
 
 
 _RAISED = str.maketrans("0123456789", "⁰¹²³⁴⁵⁶⁷⁸⁹")
@@ -121,13 +139,14 @@ def overlap_plot(question: OverlapsQuestion, answer: OverlapsAnswer) -> Draw:
         )
         ax.set_xlabel("final quanta")
         ax.set_ylabel("initial quanta")
-        ax.xaxis.set_major_locator(MaxNLocator(integer=True))
-        ax.yaxis.set_major_locator(MaxNLocator(integer=True))
+        ax.xaxis.set_major_locator(MaxNLocator(integer=True, min_n_ticks=1))
+        ax.yaxis.set_major_locator(MaxNLocator(integer=True, min_n_ticks=1))
         bar = figure.colorbar(image, ax=ax, pad=0.02, fraction=0.05)
         bar.outline.set_visible(False)
         bar.ax.tick_params(colors=look.quiet, labelsize=8.5, length=0)
         bar.set_label("Franck-Condon factor", color=look.ink, fontsize=9.5)
-        if max(table.shape) <= MAX_WRITTEN:
+        rows, columns = table.shape
+        if ax.bbox.width >= columns * CELL_PX[0] and ax.bbox.height >= rows * CELL_PX[1]:
             _write_cells(ax, table, look)
 
     return draw
@@ -168,7 +187,7 @@ def wavefunction_plot(question: WavefunctionsQuestion, answer: WavefunctionsAnsw
             answer.potential_initial_cm1, answer.level_initial_cm1, answer.wavefunction_initial,
         )  # fmt: skip
         upper.tick_params(labelbottom=False)
-        lower.set_xlabel("dimensionless coordinate q′ of the final state")
+        lower.set_xlabel("coordinate q′ of the final state")
 
     return draw
 
@@ -204,9 +223,15 @@ def _panel(
 
 
 def warm() -> None:
-    """Draw one small plot, so that the first one asked for is not slow (fonts, imports)."""
-
-    def draw(figure: Figure, look: Look) -> None:
-        axes(figure, look).set_xlabel("wavenumber / cm⁻¹")
-
-    picture(Sheet("warm", "", title="0123456789"), draw, "svg")
+    """Draw a plot with everything on it, so that the first one asked for is not slow (fonts)."""
+    quanta = np.arange(10, dtype=np.int32)[:, None]
+    lines = LineList(
+        position_cm1=100.0 * np.arange(10.0),
+        intensity=np.linspace(1.0, 0.1, 10),
+        v_initial=quanta,
+        v_final=quanta,
+        completeness=Completeness(1.0, 1.0, 0.0),
+        accuracy=Accuracy(0.0, "proven", "none"),
+    )
+    for kind in ("svg", "png"):
+        picture(Sheet("warm", "", title="0123456789"), stick_plot(None, lines), kind)

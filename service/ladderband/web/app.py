@@ -8,11 +8,13 @@ from flask import Flask, Response, request
 
 from ladderband.settings import Settings, load_settings
 from ladderband.usecases.limits import Limits
-from ladderband.web import bands_guide, jobs, operations, pages, problems, sweeps
+from ladderband.web import jobs, operations, pages, problems, sweeps
 from ladderband.web.desk import Desk
 from ladderband.web.desk import install as install_desk
+from ladderband.web.guide.routes import blueprint as guide_blueprint
 from ladderband.web.resource import blueprint_of
 from ladderband.web.resources import RESOURCES
+from ladderband.web.reuse import KeptPictures
 
 
 def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Flask:
@@ -27,11 +29,12 @@ def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Fl
     app.config["READY"] = threading.Event()
     app.config["READY"].set()
     app.config["DESK"] = desk
+    app.config["PICTURES"] = KeptPictures()
     problems.install(app)
     operations.install(app, settings.log_requests)
     install_desk(app)
     app.register_blueprint(pages.blueprint)
-    app.register_blueprint(bands_guide.blueprint)
+    app.register_blueprint(guide_blueprint)
     app.register_blueprint(jobs.blueprint)
     app.register_blueprint(sweeps.blueprint)
     for resource in RESOURCES:

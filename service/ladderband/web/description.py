@@ -233,23 +233,26 @@ def _operation(operation_id: str, summary: str, content: dict[str, Any]) -> dict
 
 
 def files() -> dict[str, bytes]:
-    """Every file of the description folder: the document and one file an example."""
+    """Every file of the description folder: the document, and the body of each example.
+
+    ``examples/bands/cold-emission.json`` is for ``curl -d @FILE`` to ``/v1/bands``.
+    """
     found = {"openapi.json": description_json()}
     options = orjson.OPT_INDENT_2 | orjson.OPT_APPEND_NEWLINE
     for resource in RESOURCES:
-        stem = resource.path.removeprefix("/v1/")
         for name, body in resource.examples.items():
-            example = {"method": "POST", "path": resource.path, "body": dict(body)}
-            found[f"examples/{stem}-{name}.json"] = orjson.dumps(example, option=options)
+            found[f"examples/{resource.name}/{name}.json"] = orjson.dumps(
+                dict(body), option=options
+            )
     return found
 
 
 def write_files(folder: Path) -> list[Path]:
     """Write the description folder; examples that are no longer declared are removed."""
-    (folder / "examples").mkdir(parents=True, exist_ok=True)
     for path in _superfluous(folder):
         path.unlink()
     for name, content in files().items():
+        (folder / name).parent.mkdir(parents=True, exist_ok=True)
         (folder / name).write_bytes(content)
     return [folder / name for name in files()]
 
@@ -265,5 +268,5 @@ def stale_files(folder: Path) -> list[Path]:
 
 
 def _superfluous(folder: Path) -> list[Path]:
-    present = set((folder / "examples").glob("*.json"))
+    present = set((folder / "examples").rglob("*.json"))
     return sorted(present - {folder / name for name in files()})

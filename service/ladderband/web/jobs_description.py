@@ -6,6 +6,7 @@ from typing import Any
 
 from ladderband.jobs.records import FINAL_STATES, OPEN_STATES
 from ladderband.schemas.jobs import JobListSchema, JobSchema
+from ladderband.schemas.query import ViewQuery
 from ladderband.schemas.sweeps import SweepRequest
 from ladderband.web.jobs import PAGE
 
@@ -148,11 +149,14 @@ def _result() -> dict[str, Any]:
         "application/vnd.apache.arrow.file": {"schema": _BINARY},
         "application/vnd.apache.parquet": {"schema": _BINARY},
     }
-    wanted = _query("format", _TEXT, "Name of the format instead of Accept.")
+    view = [
+        _query(name, field.json_schema(), field.metadata["description"])  # type: ignore[attr-defined]
+        for name, field in sorted(ViewQuery().fields.items())
+    ]
     responses = {
         "200": _response("The whole result.", content),
         "206": _response("The bytes asked for by Range.", content),
         "304": {"description": "If-None-Match names this result."},
     }
     summary = "The result in any format of its resource"
-    return _described("getJobResult", summary, [_JOB_ID, wanted], responses)
+    return _described("getJobResult", summary, [_JOB_ID, *view], responses)

@@ -39,6 +39,7 @@ from ladderband.web.desk import Desk, accepted
 from ladderband.web.digest import request_digest
 from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
 from ladderband.web.problems import AlreadyHeld
+from ladderband.web.reuse import KeptPictures, allow_reuse
 
 Q = TypeVar("Q")
 A = TypeVar("A")
@@ -46,6 +47,7 @@ Body = bytes | Iterable[bytes]
 VIEW = ViewQuery()
 VIEW_NAMES = frozenset(VIEW.fields)
 NO_VIEW: dict[str, Any] = VIEW.read({})
+PICTURES = frozenset({"svg", "png"})
 
 
 @dataclass(frozen=True)
@@ -100,11 +102,17 @@ class Resource(Generic[Q, A]):
         digest = g.digest = self.digest(loaded.question)
         tag = tag_of(digest, name, view)
         if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
-            return _not_modified(tag)
+            return not_modified(tag)
+        pictures: KeptPictures | None = current_app.config["PICTURES"] if name in PICTURES else None
+        if pictures is not None and (kept := pictures.find(tag)) is not None:
+            return _response(kept, name, tag)
         found = self._answered(body, loaded.question, digest)
         if isinstance(found, JobView):
             return accepted(found)
-        return _response(self.rendered(loaded, found, name, view), name, tag)
+        made = self.rendered(loaded, found, name, view)
+        if pictures is not None and isinstance(made, bytes):
+            pictures.keep(tag, made)
+        return _response(made, name, tag)
 
     def _answered(self, body: Any, question: Q, digest: str) -> A | JobView:
         """The answer, computed here or, when it is dear, in a compute process; or the job."""
@@ -155,25 +163,21 @@ def _view() -> dict[str, Any]:
 
 def tag_of(digest: str, name: str, view: dict[str, Any]) -> str:
     """The ETag of one rendering of an answer."""
-    return digest if name == "json" else f"{digest}-{name}-{request_digest(name, view)[:8]}"
+    return digest if name == "json" else f"{digest}-{name}-{request_digest(name, view)[:16]}"
 
 
-def _not_modified(tag: str) -> Response:
+def not_modified(tag: str) -> Response:
+    """304, or the refusal of a POST, for a client that holds the answer already."""
     if request.method not in ("GET", "HEAD"):  # RFC 9110, section 13.1.2
         raise AlreadyHeld("If-None-Match names the answer to this request.", etag=tag)
     response = Response(status=304)
     response.set_etag(tag)
-    return response
+    return allow_reuse(response)
 
 
 def _response(body: Body, name: str, tag: str) -> Response:
-    headers = [
-        ("Content-Type", MEDIA_TYPES[name]),
-        ("ETag", f'"{tag}"'),
-        ("Vary", "Accept"),
-        ("Cache-Control", "private, max-age=0, must-revalidate"),
-    ]
-    return Response(body, headers=headers)
+    headers = [("Content-Type", MEDIA_TYPES[name]), ("ETag", f'"{tag}"')]
+    return allow_reuse(Response(body, headers=headers))
 
 
 def blueprint_of(resource: Resource[Any, Any]) -> Blueprint:

@@ -22,8 +22,9 @@ from ladderband.jobs.submissions import JobView, request_of
 from ladderband.schemas.query import ViewQuery
 from ladderband.web.desk import Desk
 from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
-from ladderband.web.resource import Body, Resource, tag_of
+from ladderband.web.resource import Body, Resource, not_modified, tag_of
 from ladderband.web.resources import RESOURCES
+from ladderband.web.reuse import allow_reuse
 
 KEPT_S = 6 * 3600.0
 """Rendered files are only a cache; older ones are removed when a new one is made."""
@@ -81,7 +82,9 @@ def _table(desk: Desk, job: JobView, name: str) -> Iterator[bytes]:
 
 
 def _sent(desk: Desk, tag: str, name: str, render: Any) -> Response:
-    """The file of this rendering, made if it is not there; ranges and 304 by werkzeug."""
+    """The file of this rendering, made if it is not there; ranges by werkzeug."""
+    if tag in request.if_none_match:
+        return not_modified(tag)
     folder = desk.settings.data_path / "results"
     path = folder / tag
     if not path.exists():
@@ -90,9 +93,7 @@ def _sent(desk: Desk, tag: str, name: str, render: Any) -> Response:
     response.headers["Content-Type"] = MEDIA_TYPES[name]
     response.headers.pop("Last-Modified", None)  # of the cache file, which says nothing
     response.headers.pop("Content-Disposition", None)
-    response.headers["Vary"] = "Accept"
-    response.headers["Cache-Control"] = "private, max-age=0, must-revalidate"
-    return response
+    return allow_reuse(response)
 
 
 def _write(folder: Path, path: Path, body: Body) -> None:
