@@ -3,7 +3,8 @@
     python tests/benchmarks/http_requests.py
 
 1. ``POST /v1/progressions`` (one mode, 20 lines; validation, log line and metrics included) against
-   an empty Flask route in the same server configuration. Rounds of both alternate.
+   an empty Flask route in the same server configuration, for questions never asked before and for one
+   that was. Rounds alternate.
 2. 10,000 oscillator pairs in one request against one pair a request.
 
 Client and server share the machine's cores, so the client reads answers with as little work as it
@@ -23,6 +24,7 @@ import sys
 import tempfile
 import threading
 import time
+from collections.abc import Callable
 from pathlib import Path
 from urllib.parse import urlsplit
 
@@ -99,7 +101,11 @@ def exchange(connection: socket.socket, message: bytes) -> bytes:
     return data[:end]
 
 
-def rate(address: tuple[str, int], message: bytes, seconds: float) -> float:
+Messages = Callable[[int], bytes]
+"""The k-th request of a connection; connections count in steps of CONNECTIONS."""
+
+
+def rate(address: tuple[str, int], messages: Messages, seconds: float) -> float:
     """Requests a second over CONNECTIONS keep-alive connections."""
     counts = [0] * CONNECTIONS
     stop = time.perf_counter() + seconds
@@ -108,6 +114,7 @@ def rate(address: tuple[str, int], message: bytes, seconds: float) -> float:
         with socket.create_connection(address) as connection:
             connection.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
             while time.perf_counter() < stop:
+                message = messages(CONNECTIONS * counts[index] + index)
                 assert b" 200 " in exchange(connection, message)[:20]
                 counts[index] += 1
 
@@ -127,24 +134,44 @@ def show(name: str, values: list[float], unit: str) -> None:
 
 def small_requests(empty: tuple[str, int], service: tuple[str, int]) -> None:
     """Benchmark 1."""
-    progression = request_bytes("POST", "/v1/progressions", json.dumps(ONE_MODE).encode())
-    nothing = request_bytes("GET", "/empty")
-    health = request_bytes("GET", "/healthz")
-    plain, work, live = [], [], []
+    nothing, health = always("GET", "/empty"), always("GET", "/healthz")
+    known = always("POST", "/v1/progressions", json.dumps(ONE_MODE).encode())
+    plain, work, repeated, live = [], [], [], []
     for index in range(ROUNDS + 1):
         a = rate(empty, nothing, SECONDS)
-        b = rate(service, progression, SECONDS)
+        b = rate(service, new_questions(index), SECONDS)
         c = rate(service, health, SECONDS)
+        d = rate(service, known, SECONDS)
         if index:  # the first round warms up
             plain.append(a)
             work.append(b)
             live.append(c)
+            repeated.append(d)
     show("empty Flask route", plain, "requests/s")
     show("GET /healthz (metrics, log line)", live, "requests/s")
-    show("POST /v1/progressions, one mode, 20 lines", work, "requests/s")
-    ratios = [b / a for a, b in zip(plain, work, strict=True)]
-    print(f"ratio to the empty route: {statistics.median(ratios):.2f} (target 0.6)")
-    print(f"  rounds: {', '.join(f'{ratio:.2f}' for ratio in ratios)}\n")
+    show("POST /v1/progressions, a new question each", work, "requests/s")
+    show("POST /v1/progressions, the same each time", repeated, "requests/s")
+    for name, rates in (("new questions", work), ("the same question", repeated)):
+        ratios = [b / a for a, b in zip(plain, rates, strict=True)]
+        print(f"ratio to the empty route, {name}: {statistics.median(ratios):.2f} (target 0.6)")
+        print(f"  rounds: {', '.join(f'{ratio:.2f}' for ratio in ratios)}\n")
+
+
+def always(method: str, path: str, body: bytes = b"") -> Messages:
+    """The same request again and again."""
+    message = request_bytes(method, path, body)
+    return lambda number: message
+
+
+def new_questions(salt: int) -> Messages:
+    """One mode, 20 lines, and a Huang-Rhys factor that was never asked for before."""
+    before, after = json.dumps(ONE_MODE).split("1.25")
+
+    def message(number: int) -> bytes:
+        body = f"{before}1.{salt:02d}{number:09d}{after}".encode()
+        return request_bytes("POST", "/v1/progressions", body)
+
+    return message
 
 
 def batches(service: tuple[str, int]) -> None:
@@ -157,15 +184,13 @@ def batches(service: tuple[str, int]) -> None:
         "displacement": rng.uniform(-1.5, 1.5, PAIRS).tolist(),
     }
     quanta = {"v_initial_max": 0, "v_final_max": 4}
-    one = {name: values[0] for name, values in columns.items()} | quanta
-    single = request_bytes("POST", "/v1/overlaps", json.dumps(one).encode())
     batch = request_bytes(
         "POST", "/v1/overlaps?format=npy", json.dumps({**columns, **quanta}).encode()
     )
     text = request_bytes("POST", "/v1/overlaps", json.dumps({**columns, **quanta}).encode())
     singles, npy, as_json = [], [], []
     for index in range(4):
-        a = rate(service, single, SECONDS)
+        a = rate(service, single_pairs(columns, quanta, index), SECONDS)
         b = PAIRS * one_connection_rate(service, batch)
         c = PAIRS * one_connection_rate(service, text)
         if index:
@@ -179,6 +204,17 @@ def batches(service: tuple[str, int]) -> None:
         f"ratio, JSON: {statistics.median(as_json) / statistics.median(singles):.0f} (target 100)"
     )
     print(f"ratio, npy: {statistics.median(npy) / statistics.median(singles):.0f}")
+
+
+def single_pairs(columns: dict[str, list[float]], quanta: dict[str, int], salt: int) -> Messages:
+    """One pair a request, each a new one."""
+
+    def message(number: int) -> bytes:
+        one = {name: values[number % PAIRS] for name, values in columns.items()} | quanta
+        one["displacement"] += 1e-9 * (salt * 1e6 + number)
+        return request_bytes("POST", "/v1/overlaps", json.dumps(one).encode())
+
+    return message
 
 
 def one_connection_rate(address: tuple[str, int], message: bytes) -> float:

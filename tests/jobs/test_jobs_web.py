@@ -464,3 +464,8 @@ def test_a_database_that_is_away_leaves_known_keys_valid(tmp_path: Path) -> None
     assert (gone.status_code, gone.json["type"]) == (503, "/problems/storage-unavailable")
     assert "Retry-After" in gone.headers
     kept.dispose()
+
+
+def test_who_prefers_a_job_gets_one_although_the_answer_is_kept(service: Service) -> None:
+    assert service.client.post("/v1/overlaps", json=OVERLAPS).status_code == 200
+    assert service.client.post("/v1/overlaps", json=OVERLAPS, headers=ASYNC).status_code == 202

@@ -1,17 +1,17 @@
-"""Pictures as links: drawn once, reusable by browsers and proxies, never wrongly."""
+"""Answers and pictures as links: made once, reusable by browsers and proxies, never wrongly."""
 
 from __future__ import annotations
 
 import pytest
 
 from ladderband.web import progressions
-from ladderband.web.reuse import KeptPictures
+from ladderband.web.reuse import Kept, KeptBodies
 
 QUERY = "/v1/progressions?wavenumber_initial_cm1=992&wavenumber_final_cm1=923&huang_rhys=1.23"
 
 
-def test_the_least_recently_shown_picture_makes_room():
-    kept = KeptPictures(most_bytes=100)
+def test_the_least_recently_sent_body_makes_room():
+    kept = KeptBodies(most_bytes=100)
     for name in "abcd":
         kept.keep(name, name.encode() * 25)
     assert kept.find("a") == b"a" * 25
@@ -21,16 +21,35 @@ def test_the_least_recently_shown_picture_makes_room():
     assert kept.find("large") is None
 
 
-def test_keeping_a_picture_twice_counts_it_once():
-    kept = KeptPictures(most_bytes=100)
+def test_keeping_a_body_twice_counts_it_once():
+    kept = KeptBodies(most_bytes=100)
     for _ in range(9):
         kept.keep("a", b"x" * 25)
     kept.keep("b", b"y" * 25)
     assert kept.find("a") is not None
 
 
-@pytest.mark.parametrize("kind", ["svg", "png"])
-def test_the_same_picture_is_computed_and_drawn_once(kind, client, monkeypatch):
+def test_many_answers_push_no_picture_out():
+    kept = Kept()
+    kept.of("svg").keep("picture", b"x" * 1000)
+    for number in range(20_000):
+        kept.of("json").keep(str(number), b"y" * 1000)
+    assert kept.of("svg").find("picture") is not None
+    assert kept.of("json").find("0") is None
+
+
+def test_a_warning_about_the_spelling_comes_every_time(client):
+    """It belongs to the request and not to the question, so such an answer is not kept."""
+    mode = {"wavenumber_initial_cm1": 900.0, "wavenumber_final_cm1": 880.0, "huang_rhys": 0.4}
+    body = {"modes": [mode, mode], "mixing": [[0.8, 0.6], [-0.6, 0.80001]]}
+    body["mixing_repair"] = "nearest-orthogonal"
+    answers = [client.post("/v1/lines", json=body).json for _ in range(2)]
+    assert [len(answer["warnings"]) for answer in answers] == [1, 1]
+    assert client.application.config["KEPT"].of("json").find(answers[0]["request_digest"]) is None
+
+
+@pytest.mark.parametrize("kind", ["json", "svg", "png"])
+def test_the_same_answer_is_computed_and_rendered_once(kind, client, monkeypatch):
     def no_more(*arguments):
         raise AssertionError("computed again")
 

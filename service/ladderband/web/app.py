@@ -14,7 +14,7 @@ from ladderband.web.desk import install as install_desk
 from ladderband.web.guide.routes import blueprint as guide_blueprint
 from ladderband.web.resource import blueprint_of
 from ladderband.web.resources import RESOURCES
-from ladderband.web.reuse import KeptPictures
+from ladderband.web.reuse import Kept
 
 
 def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Flask:
@@ -29,7 +29,7 @@ def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Fl
     app.config["READY"] = threading.Event()
     app.config["READY"].set()
     app.config["DESK"] = desk
-    app.config["PICTURES"] = KeptPictures()
+    app.config["KEPT"] = Kept()
     problems.install(app)
     operations.install(app, settings.log_requests)
     install_desk(app)

@@ -35,11 +35,11 @@ from ladderband.schemas.query import QuerySchema, ViewQuery
 from ladderband.settings import Settings
 from ladderband.usecases.limits import Limits
 from ladderband.web.body import read_json
-from ladderband.web.desk import Desk, accepted
+from ladderband.web.desk import Desk, accepted, prefers_async
 from ladderband.web.digest import request_digest
 from ladderband.web.negotiation import MEDIA_TYPES, chosen_format
 from ladderband.web.problems import AlreadyHeld
-from ladderband.web.reuse import KeptPictures, allow_reuse
+from ladderband.web.reuse import KeptBodies, allow_reuse
 
 Q = TypeVar("Q")
 A = TypeVar("A")
@@ -47,7 +47,6 @@ Body = bytes | Iterable[bytes]
 VIEW = ViewQuery()
 VIEW_NAMES = frozenset(VIEW.fields)
 NO_VIEW: dict[str, Any] = VIEW.read({})
-PICTURES = frozenset({"svg", "png"})
 
 
 @dataclass(frozen=True)
@@ -103,15 +102,15 @@ class Resource(Generic[Q, A]):
         tag = tag_of(digest, name, view)
         if "HTTP_IF_NONE_MATCH" in request.environ and tag in request.if_none_match:
             return not_modified(tag)
-        pictures: KeptPictures | None = current_app.config["PICTURES"] if name in PICTURES else None
-        if pictures is not None and (kept := pictures.find(tag)) is not None:
-            return _response(kept, name, tag)
+        kept = _kept(loaded, name)
+        if kept is not None and (held := kept.find(tag)) is not None:
+            return _response(held, name, tag)
         found = self._answered(body, loaded.question, digest)
         if isinstance(found, JobView):
             return accepted(found)
         made = self.rendered(loaded, found, name, view)
-        if pictures is not None and isinstance(made, bytes):
-            pictures.keep(tag, made)
+        if kept is not None and isinstance(made, bytes):
+            kept.keep(tag, made)
         return _response(made, name, tag)
 
     def _answered(self, body: Any, question: Q, digest: str) -> A | JobView:
@@ -159,6 +158,18 @@ def _view() -> dict[str, Any]:
     if request.method == "POST":
         return VIEW.read(given)  # a POST has no other parameters: unknown ones are refused
     return VIEW.read({name: values for name, values in given.items() if name in VIEW_NAMES})
+
+
+def _kept(loaded: Loaded[Any], name: str) -> KeptBodies | None:
+    """Where answers to this request are kept; None where a tag does not say all.
+
+    Warnings about the spelling of a request belong to it and not to its question; and who prefers a
+    job gets one.
+    """
+    if loaded.warnings or prefers_async():
+        return None
+    kept: KeptBodies = current_app.config["KEPT"].of(name)
+    return kept
 
 
 def tag_of(digest: str, name: str, view: dict[str, Any]) -> str:

@@ -12,7 +12,11 @@ MAX_AGE_S = 3600
 may be shown without asking. Only an upgrade can change it, or the first key that is asked for; an
 hour is how long either may take to reach everybody. After it a cache must ask, and is told 304."""
 
-KEPT_BYTES = 16_000_000
+PICTURE_BYTES = 16_000_000
+TEXT_BYTES = 8_000_000
+"""Apart, because ten thousand answers of a fitting loop must not push a dashboard's picture out."""
+
+_PICTURES = frozenset({"svg", "png"})
 
 
 def allow_reuse(response: Response) -> Response:
@@ -30,28 +34,40 @@ def allow_reuse(response: Response) -> Response:
     return response
 
 
-class KeptPictures:
-    """Plots by the tag of their answer; the least recently shown make room."""
+class KeptBodies:
+    """Bodies of answers by their tag; the least recently sent make room."""
 
-    def __init__(self, most_bytes: int = KEPT_BYTES) -> None:
+    def __init__(self, most_bytes: int) -> None:
         self.most_bytes = most_bytes
         self._kept: OrderedDict[str, bytes] = OrderedDict()
         self._size = 0
         self._lock = threading.Lock()
 
     def find(self, tag: str) -> bytes | None:
-        """The plot of this tag, None when it is not here."""
+        """The body of this tag, None when it is not here."""
         with self._lock:
             if tag in self._kept:
                 self._kept.move_to_end(tag)
             return self._kept.get(tag)
 
-    def keep(self, tag: str, picture: bytes) -> None:
-        """Keep a plot, unless it alone would fill the place."""
+    def keep(self, tag: str, body: bytes) -> None:
+        """Keep a body, unless it alone would fill the place."""
         with self._lock:
-            if tag in self._kept or len(picture) > self.most_bytes // 4:
+            if tag in self._kept or len(body) > self.most_bytes // 4:
                 return
-            self._kept[tag] = picture
-            self._size += len(picture)
+            self._kept[tag] = body
+            self._size += len(body)
             while self._size > self.most_bytes:
                 self._size -= len(self._kept.popitem(last=False)[1])
+
+
+class Kept:
+    """What one web process keeps: pictures, and everything else."""
+
+    def __init__(self) -> None:
+        self._pictures = KeptBodies(PICTURE_BYTES)
+        self._texts = KeptBodies(TEXT_BYTES)
+
+    def of(self, name: str) -> KeptBodies:
+        """The place for answers in a format."""
+        return self._pictures if name in _PICTURES else self._texts
