@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import threading
 from collections import Counter
+from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
-from contextlib import closing
+from contextlib import closing, contextmanager
 
 import pytest
 import sqlalchemy as sa
@@ -330,18 +331,39 @@ def test_a_database_that_is_away_is_a_clear_refusal() -> None:
         pass
 
 
+NO_ROOM = """
+CREATE FUNCTION no_room() RETURNS trigger LANGUAGE plpgsql AS
+$$ BEGIN RAISE 'Platte voll' USING ERRCODE = 'disk_full'; END $$;
+CREATE TRIGGER no_room BEFORE INSERT ON output EXECUTE FUNCTION no_room();
+"""
+"""What PostgreSQL answers when it cannot extend a table's file, in a language nobody looks for."""
+
+
+@contextmanager
+def full_disk(database: Database) -> Iterator[None]:
+    """No row of an output finds room: a limit of pages on SQLite, a trigger on PostgreSQL."""
+    if database.is_sqlite:
+        with database.reading() as connection:
+            pages = connection.exec_driver_sql("PRAGMA page_count").scalar()
+            connection.exec_driver_sql(f"PRAGMA max_page_count = {pages}")
+        yield
+        with database.reading() as connection:
+            connection.exec_driver_sql("PRAGMA max_page_count = 1000000")
+        return
+    with database.writing() as connection:
+        connection.exec_driver_sql(NO_ROOM)
+    yield
+    with database.writing() as connection:
+        connection.exec_driver_sql("DROP TRIGGER no_room ON output")
+
+
 def test_a_full_disk_is_a_clear_refusal_and_loses_nothing(database: Database) -> None:
-    if not database.is_sqlite:
-        pytest.skip("the page limit that imitates a full disk is SQLite's")
     made = put(database)
     ticket = take(database)
-    with database.reading() as connection:
-        pages = connection.exec_driver_sql("PRAGMA page_count").scalar()
-        connection.exec_driver_sql(f"PRAGMA max_page_count = {pages}")
-    with pytest.raises(StorageUnavailable, match="no room left"):
-        claims.finish(database, ticket, [bytes(1_000_000)], 0.1)
-    assert view(database, made.id).done == 0
-    with database.reading() as connection:
-        connection.exec_driver_sql("PRAGMA max_page_count = 1000000")
+    with full_disk(database):
+        with pytest.raises(StorageUnavailable, match="no room left"):
+            claims.finish(database, ticket, [bytes(1_000_000)], 0.1)
+        assert view(database, made.id).done == 0
+        assert shards(database, made.id)[0].state == "running"
     assert claims.finish(database, ticket, [bytes(1_000_000)], 0.1)
     assert view(database, made.id).state == "succeeded"

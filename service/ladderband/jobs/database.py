@@ -8,7 +8,6 @@ order: the job first, its shards after.
 
 from __future__ import annotations
 
-import re
 import sqlite3
 import time
 from collections.abc import Iterator
@@ -28,6 +27,9 @@ BUSY_S = 20.0
 
 LOCK_NUMBER = 0x6C616464
 """Names the advisory lock that lets one process at a time migrate on PostgreSQL."""
+
+DISK_FULL = "53100"
+"""SQLSTATE of a full disk; a server words its messages in its own language."""
 
 _WRITES = "ladderband_writes"
 
@@ -139,7 +141,8 @@ def _storage_errors(database: Database) -> Iterator[None]:
 
 def _reason(error: sa.exc.SQLAlchemyError) -> str:
     """A sentence without the server's internals: full, or not reachable."""
-    text = str(getattr(error, "orig", error))
-    if re.search(r"disk is full|No space left|disk full", text, re.IGNORECASE):
+    cause = getattr(error, "orig", None)
+    state, code = getattr(cause, "sqlstate", None), getattr(cause, "sqlite_errorcode", None)
+    if state == DISK_FULL or code == sqlite3.SQLITE_FULL:
         return "The job database has no room left; nothing was changed. Free space, then try again."
     return "The job database cannot be reached at the moment; nothing was changed. Try again soon."
