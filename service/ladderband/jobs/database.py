@@ -73,14 +73,14 @@ class Database:
             return time.time()  # one machine only
         return float(connection.scalar(sa.text("SELECT extract(epoch FROM clock_timestamp())")))
 
-    def migrate(self) -> None:
+    def migrate(self, revision: str = "head") -> None:
         """Bring the tables to this version's schema; safe when several processes do it at once."""
         with _storage_errors(self), self._engine.connect() as connection:
             writer = connection.execution_options(**{_WRITES: True})
             with writer.begin():
                 if not self.is_sqlite:
                     writer.execute(sa.select(sa.func.pg_advisory_xact_lock(LOCK_NUMBER)))
-                command.upgrade(_alembic(writer), "head")
+                command.upgrade(_alembic(writer), revision)
 
     def is_current(self) -> bool:
         """True when the tables have this version's schema."""
