@@ -39,10 +39,12 @@ def postgresql_database(options: str = "") -> Iterator[str]:
             connection.execute(sa.text(f"CREATE DATABASE {name}{options}"))
     except sa.exc.OperationalError:
         pytest.skip(f"no PostgreSQL answers at {SERVER}")
-    yield sa.make_url(SERVER).set(database=name).render_as_string(hide_password=False)
-    with server.connect() as connection:
-        connection.execute(sa.text(f"DROP DATABASE {name} WITH (FORCE)"))
-    server.dispose()
+    try:
+        yield sa.make_url(SERVER).set(database=name).render_as_string(hide_password=False)
+    finally:
+        with server.connect() as connection:
+            connection.execute(sa.text(f"DROP DATABASE {name} WITH (FORCE)"))
+        server.dispose()
 
 
 @pytest.fixture

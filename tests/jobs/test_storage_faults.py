@@ -106,8 +106,10 @@ def filled(disk: Path) -> Iterator[None]:
                 file.flush()
         except OSError:
             pass
-    yield
-    filler.unlink()
+    try:
+        yield
+    finally:
+        filler.unlink()
 
 
 @pytest.mark.slow
