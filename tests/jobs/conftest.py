@@ -30,19 +30,21 @@ def database_url(request: pytest.FixtureRequest, tmp_path: Path) -> Iterator[str
         yield from postgresql_database()
 
 
-def postgresql_database() -> Iterator[str]:
+def postgresql_database(options: str = "") -> Iterator[str]:
     pytest.importorskip("psycopg", reason="the PostgreSQL driver is not installed")
     server = sa.create_engine(SERVER, isolation_level="AUTOCOMMIT", poolclass=sa.NullPool)
     name = f"ladderband_test_{secrets.token_hex(6)}"
     try:
         with server.connect() as connection:
-            connection.execute(sa.text(f"CREATE DATABASE {name}"))
+            connection.execute(sa.text(f"CREATE DATABASE {name}{options}"))
     except sa.exc.OperationalError:
         pytest.skip(f"no PostgreSQL answers at {SERVER}")
-    yield sa.make_url(SERVER).set(database=name).render_as_string(hide_password=False)
-    with server.connect() as connection:
-        connection.execute(sa.text(f"DROP DATABASE {name} WITH (FORCE)"))
-    server.dispose()
+    try:
+        yield sa.make_url(SERVER).set(database=name).render_as_string(hide_password=False)
+    finally:
+        with server.connect() as connection:
+            connection.execute(sa.text(f"DROP DATABASE {name} WITH (FORCE)"))
+        server.dispose()
 
 
 @pytest.fixture

@@ -7,12 +7,15 @@ import os
 import signal
 import time
 from collections.abc import Callable
+from dataclasses import replace
+from hashlib import sha256
 from pathlib import Path
 from typing import Any
 
 import orjson
 
-from ladderband.jobs.kinds import Kind, Refused
+from ladderband.jobs.kinds import Kind, Kinds, Refused
+from ladderband.jobs.submissions import canonical
 from ladderband.numerics.accuracy import Deadline
 
 Request = dict[str, Any]
@@ -87,3 +90,18 @@ def _kind(answer: Callable[[Request, Deadline], Request]) -> Kind:
         return orjson.dumps(answer(request, deadline))
 
     return Kind(answer.__name__[1:], _estimate, answer, stored)
+
+
+def counted_kinds() -> Kinds:
+    """The service's own kinds; each single overlaps request computed leaves its digest in a file."""
+    from ladderband.web.kinds import kinds as service_kinds
+
+    found = service_kinds()
+    overlaps, file = found["overlaps"], Path(os.environ["LADDERBAND_TEST_MARKS"])
+
+    def stored(request: Request, deadline: Deadline) -> bytes:
+        with file.open("a") as opened:
+            opened.write(sha256(canonical(request)).hexdigest() + "\n")
+        return overlaps.stored(request, deadline)
+
+    return {**found, "overlaps": replace(overlaps, stored=stored)}

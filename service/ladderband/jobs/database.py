@@ -8,7 +8,6 @@ order: the job first, its shards after.
 
 from __future__ import annotations
 
-import re
 import sqlite3
 import time
 from collections.abc import Iterator
@@ -28,6 +27,9 @@ BUSY_S = 20.0
 
 LOCK_NUMBER = 0x6C616464
 """Names the advisory lock that lets one process at a time migrate on PostgreSQL."""
+
+DISK_FULL = "53100"
+"""SQLSTATE of a full disk; a server words its messages in its own language."""
 
 _WRITES = "ladderband_writes"
 
@@ -71,14 +73,14 @@ class Database:
             return time.time()  # one machine only
         return float(connection.scalar(sa.text("SELECT extract(epoch FROM clock_timestamp())")))
 
-    def migrate(self) -> None:
+    def migrate(self, revision: str = "head") -> None:
         """Bring the tables to this version's schema; safe when several processes do it at once."""
         with _storage_errors(self), self._engine.connect() as connection:
             writer = connection.execution_options(**{_WRITES: True})
             with writer.begin():
                 if not self.is_sqlite:
                     writer.execute(sa.select(sa.func.pg_advisory_xact_lock(LOCK_NUMBER)))
-                command.upgrade(_alembic(writer), "head")
+                command.upgrade(_alembic(writer), revision)
 
     def is_current(self) -> bool:
         """True when the tables have this version's schema."""
@@ -139,7 +141,8 @@ def _storage_errors(database: Database) -> Iterator[None]:
 
 def _reason(error: sa.exc.SQLAlchemyError) -> str:
     """A sentence without the server's internals: full, or not reachable."""
-    text = str(getattr(error, "orig", error))
-    if re.search(r"disk is full|No space left|disk full", text, re.IGNORECASE):
+    cause = getattr(error, "orig", None)
+    state, code = getattr(cause, "sqlstate", None), getattr(cause, "sqlite_errorcode", None)
+    if state == DISK_FULL or code == sqlite3.SQLITE_FULL:
         return "The job database has no room left; nothing was changed. Free space, then try again."
     return "The job database cannot be reached at the moment; nothing was changed. Try again soon."

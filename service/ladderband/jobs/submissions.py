@@ -32,6 +32,14 @@ from ladderband.jobs.records import (
     turn,
 )
 
+_COLUMNS = [column for column in job.c if column.name != "request"]
+
+# made once: to make such a query costs as much as SQLite's answer to it
+_VIEW = sa.select(*_COLUMNS, job.c.request.is_not(None).label("kept"))
+_OF_KEY = _VIEW.where(job.c.key_id == sa.bindparam("key_id"))
+_ONE = _OF_KEY.where(job.c.id == sa.bindparam("job_id"))
+_LIVE = _OF_KEY.where(job.c.live_digest == sa.bindparam("digest"))
+
 
 @dataclass(frozen=True, slots=True)
 class NewJob:
@@ -130,11 +138,13 @@ def submit(database: Database, new: NewJob, open_limit: int) -> tuple[JobView, b
 def _existing(database: Database, new: NewJob) -> JobView | None:
     """The fast way out, without the write lock, when nothing has to be written."""
     with database.reading() as connection:
-        known = _by_token(connection, new)
-        if known is None and new.token is None:
-            row = _live(connection, new)
-            known = row.id if row is not None and row.lane <= new.lane else None
-        return None if known is None else _view(connection, database, known, new.key_id)
+        if new.token is not None:
+            known = _by_token(connection, new)
+            return None if known is None else _view(connection, database, known, new.key_id)
+        row = _live(connection, new)
+        if row is None or row.lane > new.lane:
+            return None
+        return _as_view(row, database.now(connection))
 
 
 def _by_token(connection: Connection, new: NewJob) -> str | None:
@@ -149,11 +159,8 @@ def _by_token(connection: Connection, new: NewJob) -> str | None:
 
 
 def _live(connection: Connection, new: NewJob) -> Row[*tuple[Any, ...]] | None:
-    return connection.execute(
-        sa.select(job.c.id, job.c.lane, job.c.state).where(
-            job.c.key_id == new.key_id, job.c.live_digest == new.digest
-        )
-    ).one_or_none()
+    values = {"key_id": new.key_id, "digest": new.digest}
+    return connection.execute(_LIVE, values).one_or_none()
 
 
 def _insert(
@@ -216,9 +223,6 @@ def _insert_or_ignore(connection: Connection, table: sa.Table, values: dict[str,
     return connection.execute(wanted).one_or_none() is not None
 
 
-_COLUMNS = [column for column in job.c if column.name != "request"]
-
-
 def view(database: Database, job_id: str, key_id: str = "") -> JobView:
     """The job as it stands; raises JobNotFound, also when it belongs to another key."""
     with database.reading() as connection:
@@ -226,11 +230,7 @@ def view(database: Database, job_id: str, key_id: str = "") -> JobView:
 
 
 def _view(connection: Connection, database: Database, job_id: str, key_id: str) -> JobView:
-    row = connection.execute(
-        sa.select(*_COLUMNS, job.c.request.is_not(None).label("kept")).where(
-            job.c.id == job_id, job.c.key_id == key_id
-        )
-    ).one_or_none()
+    row = connection.execute(_ONE, {"job_id": job_id, "key_id": key_id}).one_or_none()
     if row is None:
         raise JobNotFound(job_id)
     return _as_view(row, database.now(connection))
@@ -261,8 +261,7 @@ def listed(
     database: Database, key_id: str, *, limit: int, states: Sequence[str] = (), before: float = 0.0
 ) -> list[JobView]:
     """The key's jobs, newest first; ``before`` (a ``created`` time) asks for the next page."""
-    query = sa.select(*_COLUMNS, job.c.request.is_not(None).label("kept"))
-    query = query.where(job.c.key_id == key_id)
+    query = _VIEW.where(job.c.key_id == key_id)
     if states:
         query = query.where(job.c.state.in_(states))
     if before:
@@ -315,9 +314,8 @@ def cancel(database: Database, job_id: str, key_id: str = "") -> JobView:
 
 def lock(connection: Connection, job_id: str) -> Row[*tuple[Any, ...]] | None:
     """The job's row, held until the transaction ends. Always taken before rows of its shards."""
-    columns = [column for column in job.c if column.name != "request"]
     return connection.execute(
-        sa.select(*columns).where(job.c.id == job_id).with_for_update()
+        sa.select(*_COLUMNS).where(job.c.id == job_id).with_for_update()
     ).one_or_none()
 
 

@@ -18,8 +18,8 @@ from ladderband.jobs.sweeps import looked_up, tokens
 
 Block = dict[str, list[Any]]
 
-PART_ROWS = 32_768
-"""Rows of a merged part: a few megabytes, so that neither side of the database holds much more."""
+PART_ROWS = 8192
+"""Rows of a merged part: under a megabyte as text, ten as objects of a web process that renders it."""
 
 
 def column_names(pointers: Sequence[str], collect: Sequence[str]) -> list[str]:
