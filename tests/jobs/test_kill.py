@@ -188,10 +188,13 @@ def kill_at_random(tree: Tree, victim: str, job: dict[str, Any], kills: int) -> 
 @pytest.mark.timeout(900)
 @pytest.mark.parametrize("victim", ["web worker", "web", "engine", "child", "supervisor"])
 def test_ten_kills_lose_nothing_and_compute_nothing_twice(tree: Tree, victim: str) -> None:
-    job = submitted(tree, POINTS)
-    until(lambda: tree.get(job["links"]["self"]).json()["done"] > 0, 300)
-    assert kill_at_random(tree, victim, job, KILLS) == KILLS
-    check(finished_table(tree, job, 280), POINTS)
+    kills, points = 0, POINTS
+    while kills < KILLS:  # a fast machine ends a sweep before the tenth kill
+        job = submitted(tree, points)
+        until(lambda now=job: tree.get(now["links"]["self"]).json()["done"] > 0, 300)
+        kills += kill_at_random(tree, victim, job, KILLS - kills)
+        check(finished_table(tree, job, 280), points)
+        points += 1
 
 
 def test_kills_of_all_kinds_lose_nothing(tree: Tree) -> None:
