@@ -10,6 +10,7 @@ import flask_swagger_ui
 from flask import Blueprint, Response, abort, redirect, send_from_directory
 from werkzeug.wrappers import Response as WerkzeugResponse
 
+from ladderband.web.look_css import look_css
 from ladderband.web.problems import all_problems
 
 blueprint = Blueprint("pages", __name__)
@@ -33,6 +34,12 @@ def _description() -> bytes:
 def openapi() -> Response:
     """The OpenAPI 3.1 document."""
     return Response(_description(), content_type="application/json")
+
+
+@blueprint.get("/look.css")
+def look() -> Response:
+    """Colours of all pages."""
+    return guarded(Response(look_css(), content_type="text/css; charset=utf-8"))
 
 
 @blueprint.get("/docs")
