@@ -1,0 +1,146 @@
+// The bench page: binds its parts together and keeps the state in the address.
+
+import { bindControls, showControls } from "./controls.js";
+import { byId } from "./dom.js";
+import { bindLines } from "./lines_table.js";
+import { bindMeasured } from "./measured.js";
+import { modeTable } from "./mode_text.js";
+import { bindModes } from "./modes_table.js";
+import { bindKeyForm, put, waiting } from "./questions.js";
+import { bandsBody, linesBody } from "./requests.js";
+import { Stage } from "./stage.js";
+import { Store, decode, encode, example } from "./state.js";
+import { bindStates } from "./state_files.js";
+import { bindTake } from "./take.js";
+import { bindTheme } from "./theme.js";
+import { showModes, showWaves, wavesBody } from "./wavefunctions.js";
+
+const store = new Store(decode(location.hash.slice(1)) ?? example());
+const stage = new Stage(store);
+const failing = new Set();
+
+bindTheme();
+bindControls(store);
+bindLines((line) => stage.select(line));
+bindMeasured(byId("plot"), () => stage.redraw());
+bindStates(store, useTransition);
+bindKeyForm(askAll);
+const showTake = bindTake(() => ({ bands: stage.bandsBody, lines: stage.linesBody }));
+const showModesTable = bindModes(store, (index) => {
+  byId("waves-mode").value = String(index);
+  askWaves();
+  byId("waves-mode").focus();
+});
+
+byId("waves-mode").addEventListener("change", askWaves);
+byId("start-over").addEventListener("click", () => load(example()));
+byId("paste-use").addEventListener("click", usePasted);
+
+store.listen((state, kind) => {
+  if (kind === "slide" || kind === "commit") stage.changed();
+  showControls(state);
+  showModesTable(state);
+  showModes(state);
+  if (kind === "commit" || kind === "load") record(state);
+  askAll();
+});
+
+// --- asking ---
+
+function askAll() {
+  askBand();
+  put("Lines", "v1/lines", [linesBody(store.state), linesBody(store.state, true)], {
+    answer: (answer, body) => {
+      stage.setLines(answer, body);
+      settled("Lines", true);
+    },
+    problem: () => settled("Lines", false),
+  });
+  askWaves();
+}
+
+function askBand() {
+  put("Band", "v1/bands", [bandsBody(store.state, stage.axis(store.state))], {
+    answer: (answer, body) => {
+      if (stage.setBand(answer, body)) askBand();
+      settled("Band", true);
+    },
+    problem: () => settled("Band", false),
+  });
+}
+
+function askWaves() {
+  const label = byId("waves-mode").selectedOptions[0]?.text ?? "";
+  put("Wavefunctions", "v1/wavefunctions", [wavesBody(store.state)], {
+    answer: (answer) => showWaves(answer, `mode ${label}`),
+    problem: () => {},
+  });
+}
+
+// An answer or a refusal is in; the last good plot stays and says so.
+function settled(kind, good) {
+  if (good) failing.delete(kind);
+  else failing.add(kind);
+  byId("stale").hidden = !failing.size || !(stage.bandsAnswer || stage.linesAnswer);
+  byId("plot").classList.toggle("is-stale", failing.size > 0);
+  showTake();
+  if (!waiting()) stage.complete();
+}
+
+// --- states that come as a whole ---
+
+function load(state) {
+  stage.forgetRange();
+  store.change(state, "load");
+}
+
+function useTransition(transition, hasOrigin) {
+  const { process, modes, mixing } = transition;
+  const state = {
+    process,
+    shift: "displacement",
+    modes: modes.map((mode) => ({
+      label: mode.label ?? "",
+      initial: String(mode.wavenumber_initial_cm1),
+      final: String(mode.wavenumber_final_cm1),
+      shift: String(mode.displacement),
+    })),
+    mixing: mixing ?? null,
+    range: null,
+  };
+  if (hasOrigin) state.origin = String(transition.origin_cm1);
+  if (process === "photoelectron") state.unit = "eV";
+  load(state);
+}
+
+function usePasted() {
+  try {
+    const { modes, shift } = modeTable(byId("paste-text").value);
+    byId("paste-said").textContent = `${modes.length} modes were read.`;
+    byId("paste-said").classList.remove("bad");
+    load({ modes, mixing: null, range: null, ...(shift ? { shift } : {}) });
+  } catch (error) {
+    byId("paste-said").textContent = error.message;
+    byId("paste-said").classList.add("bad");
+  }
+}
+
+// --- history ---
+
+function record(state) {
+  const address = `#${encode(state)}`;
+  if (address !== location.hash) history.pushState(null, "", address);
+  showTake();
+}
+
+function fromAddress() {
+  stage.forgetRange();
+  store.change(decode(location.hash.slice(1)) ?? example(), "view");
+}
+
+window.addEventListener("popstate", fromAddress);
+window.addEventListener("pagehide", () => {
+  if (location.hash || encode(store.state) !== encode(example())) history.replaceState(null, "", `#${encode(store.state)}`);
+});
+
+store.change({}, "view");
