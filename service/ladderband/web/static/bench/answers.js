@@ -5,6 +5,7 @@ import { fromWavenumber } from "./units.js";
 
 const WORTH_A_TOOTH = 0.004;
 const WORTH_A_COMB = 0.02; // mean quanta
+const MAX_COMBS = 6;
 
 // Lines in the unit of the axis, with the orders the page walks through.
 export function lineColumns(answer, unit) {
@@ -25,7 +26,7 @@ export function lineColumns(answer, unit) {
   };
 }
 
-// One comb a mode that takes part, strongest first: 0-0 and whole quanta of this mode alone.
+// One comb for each of the modes that take part most: 0-0 and whole quanta of this mode alone.
 export function combs(answer, body, unit) {
   if (!answer) return [];
   const direction = body.process === "emission" ? -1 : 1;
@@ -33,6 +34,8 @@ export function combs(answer, body, unit) {
     .map((mode, k) => ({ mode, k }))
     .filter(({ mode }) => mode.mean_quanta > WORTH_A_COMB)
     .sort((a, b) => b.mode.mean_quanta - a.mode.mean_quanta)
+    .slice(0, MAX_COMBS)
+    .sort((a, b) => a.k - b.k)
     .map(({ mode, k }) => ({
       name: String(k + 1),
       label: body.modes[k].label ?? "",
@@ -42,14 +45,26 @@ export function combs(answer, body, unit) {
     }));
 }
 
-// The range that shows the band: the lines' own range, cut where a long tail would only be empty.
-export function fittingRange(answer, width, unit) {
+const SEEN = 0.004; // of the strongest line: what is higher can be seen on the plot
+const NEARLY_ALL = 0.2; // missing at most: with more the list does not tell where the band ends
+
+// The range that shows the band, cm^-1: where lines can be seen, or by the moments of the band.
+export function fittingRange(answer, linesAnswer, width, unit) {
+  const range = linesAnswer?.completeness.missing_at_most < NEARLY_ALL ? seenLines(linesAnswer) : byMoments(answer, width);
+  const margin = 1.6 * width + 0.03 * (range[1] - range[0]);
+  return [Math.max(range[0] - margin, unit === "nm" ? 100 : -Infinity), range[1] + margin];
+}
+
+function seenLines({ lines }) {
+  const floor = SEEN * lines.intensity.reduce((a, b) => Math.max(a, b));
+  const seen = lines.position_cm1.filter((_, k) => lines.intensity[k] >= floor);
+  return [seen.reduce((a, b) => Math.min(a, b)), seen.reduce((a, b) => Math.max(a, b))];
+}
+
+function byMoments(answer, width) {
   const { mean_cm1: mean, standard_deviation_cm1: spread } = answer.moments;
   const wide = 4.2 * Math.hypot(spread, width / 2.35);
-  const margin = 2 * width + 60;
-  const low = Math.max(answer.range_cm1[0] - margin, mean - wide, unit === "nm" ? 100 : -Infinity);
-  const high = Math.min(answer.range_cm1[1] + margin, mean + wide);
-  return [low, high];
+  return [Math.max(answer.range_cm1[0], mean - wide), Math.min(answer.range_cm1[1], mean + wide)];
 }
 
 // Before the first answer: roughly where the band will be.

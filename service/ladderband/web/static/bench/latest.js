@@ -13,7 +13,10 @@ export class Latest {
   later(work) {
     this.stop();
     const pause = Math.min(LONGEST_MS, Math.max(SHORTEST_MS, this.#took / 2));
-    this.#timer = setTimeout(() => this.#run(work), pause);
+    this.#timer = setTimeout(() => {
+      this.#timer = 0;
+      this.#run(work);
+    }, pause);
   }
 
   // work(signal) asks and returns a function that shows the answer.
@@ -35,11 +38,12 @@ export class Latest {
   }
 
   get busy() {
-    return this.#controller !== null;
+    return this.#timer !== 0 || this.#controller !== null;
   }
 
   stop() {
     clearTimeout(this.#timer);
+    this.#timer = 0;
     this.#controller?.abort();
     this.#controller = null;
   }

@@ -13,13 +13,14 @@ import { Store, decode, encode, example } from "./state.js";
 import { bindStates } from "./state_files.js";
 import { bindTake } from "./take.js";
 import { bindTheme } from "./theme.js";
-import { showModes, showWaves, wavesBody } from "./wavefunctions.js";
+import { bindWaves, showModes, showWaves, wavesBody } from "./wavefunctions.js";
 
 const store = new Store(decode(location.hash.slice(1)) ?? example());
 const stage = new Stage(store);
 const failing = new Set();
 
 bindTheme();
+bindWaves();
 bindControls(store);
 bindLines((line) => stage.select(line));
 bindMeasured(byId("plot"), () => stage.redraw());
@@ -62,7 +63,7 @@ function askAll() {
 function askBand() {
   put("Band", "v1/bands", [bandsBody(store.state, stage.axis(store.state))], {
     answer: (answer, body) => {
-      if (stage.setBand(answer, body)) askBand();
+      stage.setBand(answer, body);
       settled("Band", true);
     },
     problem: () => settled("Band", false),
@@ -84,7 +85,10 @@ function settled(kind, good) {
   byId("stale").hidden = !failing.size || !(stage.bandsAnswer || stage.linesAnswer);
   byId("plot").classList.toggle("is-stale", failing.size > 0);
   showTake();
-  if (!waiting()) stage.complete();
+  if (waiting("Band", "Lines")) return;
+  // both answers belong to the same input: do they fit the range?
+  if (stage.refit()) askBand();
+  else stage.complete();
 }
 
 // --- states that come as a whole ---
@@ -137,6 +141,9 @@ function fromAddress() {
   stage.forgetRange();
   store.change(decode(location.hash.slice(1)) ?? example(), "view");
 }
+
+// a file dropped beside its place must not replace the page
+for (const name of ["dragover", "drop"]) window.addEventListener(name, (event) => event.preventDefault());
 
 window.addEventListener("popstate", fromAddress);
 window.addEventListener("pagehide", () => {

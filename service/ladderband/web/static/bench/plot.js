@@ -1,7 +1,7 @@
 // The plot: band, lines as sticks, a comb for each mode, a measured band. Draws what it is given.
 
 import { el, svg } from "./dom.js";
-import { Linear, ticks, top } from "./scale.js";
+import { Linear, nearest, ticks, top } from "./scale.js";
 import { fixed, short } from "./text.js";
 import { UNITS } from "./units.js";
 
@@ -10,9 +10,9 @@ const RIGHT = 16;
 const HEAD = 26; // room for labels above the highest line
 const FOOT = 42;
 const COMB = 13;
-const MAX_COMBS = 6;
 const LABEL_GAP = 7; // px of free room on each side of a label
 const MAX_LABELS = 16;
+const RING_FROM = 9; // px; rings on lower sticks would only cover each other
 
 export class Plot {
   constructor(place) {
@@ -29,7 +29,7 @@ export class Plot {
     this.scene = scene;
     const { width, height } = this.place.getBoundingClientRect();
     if (width < 80 || height < 80) return;
-    const combs = scene.combs.slice(0, MAX_COMBS);
+    const { combs } = scene;
     this.foot = height - FOOT - COMB * combs.length - (combs.length ? 6 : 0);
     this.x = new Linear(scene.low, scene.high, LEFT, width - RIGHT);
     this.y = new Linear(0, scene.top * 1.02 || 1, this.foot, HEAD);
@@ -68,8 +68,10 @@ export class Plot {
     group.append(svg("path", { d: `M${LEFT} ${base}H${width - RIGHT}`, class: "rule" }));
     for (const value of across.values) {
       const x = this.x.px(value);
-      group.append(svg("path", { d: `M${x} ${base}v5`, class: "rule" }),
-        svg("text", { x, y: base + 18, class: "tick middle" }, fixed(value, across.decimals)));
+      const text = fixed(value, across.decimals);
+      group.append(svg("path", { d: `M${x} ${base}v5`, class: "rule" }));
+      if (x + 3.4 * text.length > width) continue; // it would be cut off
+      group.append(svg("text", { x, y: base + 18, class: "tick middle" }, text));
     }
     const up = ticks(0, this.y.high, this.foot / 60);
     const power = up.values.at(-1) >= 1e4 || up.values.at(-1) < 1e-2 ? Math.floor(Math.log10(this.y.high)) : 0;
@@ -107,7 +109,7 @@ export class Plot {
         cold += `M${x} ${this.foot}V${y.toFixed(1)}`;
       } else {
         hot += `M${x} ${this.foot}V${y.toFixed(1)}`;
-        if (this.foot - y > 6) rings += `M${x} ${(y - 5).toFixed(1)}a2.5 2.5 0 1 0 .01 0`;
+        if (this.foot - y > RING_FROM) rings += `M${x} ${(y - 5).toFixed(1)}a2.5 2.5 0 1 0 .01 0`;
       }
     });
     return [svg("path", { class: "cold", d: cold }), svg("path", { class: "hot", d: hot }),
@@ -146,8 +148,8 @@ export class Plot {
       if (placed.length === MAX_LABELS || lines.intensity[k] < 0.02 * lines.intensity[lines.strongest[0]]) break;
       if (!this.inView(lines.x[k])) continue;
       const half = 3.3 * lines.text[k].length + LABEL_GAP;
-      const [x, y] = [this.x.px(lines.x[k]), this.stickTop(lines.intensity[k]) - (lines.hot[k] ? 10 : 5)];
-      if (x - half < LEFT - 8 || x + half > width) continue;
+      const [x, y] = [this.x.px(lines.x[k]), this.#above(lines, k) - 5];
+      if (x - half < LEFT - 8 || x + half > width || this.#bandTop(x - half + LABEL_GAP, x + half - LABEL_GAP) < y - 9) continue;
       const free = placed.every((p) => Math.abs(p.x - x) > p.half + half || Math.abs(p.y - y) > 15);
       const covered = placed.some((p) => Math.abs(p.x - x) < half && p.y < y);
       if (!free || covered) continue;
@@ -155,6 +157,21 @@ export class Plot {
       group.append(svg("text", { x, y, class: lines.hot[k] ? "label hot-label" : "label" }, lines.text[k]));
     }
     return group;
+  }
+
+  // The height that is free above a stick: the band may be higher than the stick itself.
+  #above(lines, k) {
+    const { band } = this.scene;
+    const stick = this.stickTop(lines.intensity[k]) - (lines.hot[k] ? 6 : 0);
+    return band ? Math.min(stick, this.y.px(band.y[nearest(band.x, lines.x[k])])) : stick;
+  }
+
+  // The highest place of the band between two places of the screen.
+  #bandTop(left, right) {
+    const { band } = this.scene;
+    if (!band) return this.foot;
+    const [from, to] = [left, right].map((px) => nearest(band.x, this.x.at(px)));
+    return this.y.px(top(band.y.slice(from, to + 1)));
   }
 
   #selection({ lines, selected }) {

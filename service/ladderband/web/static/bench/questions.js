@@ -46,7 +46,7 @@ function settle(kind, problem) {
   setProblem(kind, problem?.members ?? null);
 }
 
-export const waiting = () => [...open.values()].some((latest) => latest.busy);
+export const waiting = (...kinds) => kinds.some((kind) => open.get(kind)?.busy);
 
 export function bindKeyForm(again) {
   byId("key-form").addEventListener("submit", (event) => {

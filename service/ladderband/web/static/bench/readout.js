@@ -59,7 +59,7 @@ export function showAccuracy({ bandsAnswer, linesAnswer }) {
   const parts = [];
   if (bandsAnswer) {
     const { accuracy, intensity_unit: name } = bandsAnswer;
-    const unit = name && name !== "relative" && name !== "1" ? ` ${name}` : "";
+    const unit = name.startsWith("1 ") ? "" : ` ${name}`; // "1 (largest value ...)" is no unit
     parts.push(el("span", {}, `Band within ${bound(largest(accuracy.bound))}${unit} `, seal(accuracy.evidence)));
   }
   if (linesAnswer) {

@@ -85,12 +85,13 @@ export class Stage {
     Object.assign(this, { bandsAnswer: answer, bandsBody: body });
     if (this.linesAnswer) this.#columns();
     this.redraw();
-    return this.store.state.range ? false : this.#refit(answer, body);
   }
 
   // True when the band does not fit the automatic range and should be asked for again.
-  #refit(answer, body) {
-    const [low, high] = fittingRange(answer, Number(body.line_shape.fwhm_cm1) || 100, body.axis.unit);
+  refit() {
+    if (this.store.state.range || !this.bandsAnswer) return false;
+    const { axis, line_shape: shape } = this.bandsBody;
+    const [low, high] = fittingRange(this.bandsAnswer, this.linesAnswer, Number(shape.fwhm_cm1) || 100, axis.unit);
     const [from, to] = this.#auto;
     const fits = from <= low && to >= high && to - from < TOO_WIDE * (high - low);
     if (fits) return false;
@@ -121,6 +122,7 @@ export class Stage {
       const half = (this.plot.x.high - this.plot.x.low) / 2;
       this.zoom(this.lines.x[line] - half, this.lines.x[line] + half);
     }
+    showReadout(this, null);
     this.redraw();
     speak(line === null ? "" : this.#spoken(line));
   }

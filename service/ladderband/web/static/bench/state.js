@@ -59,6 +59,7 @@ export function decode(text) {
 }
 
 function checked(given) {
+  if (!given.modes.length) throw new Error("A transition has at least one mode.");
   const state = example();
   for (const name of TEXTS) if (typeof given[name] === "string") state[name] = given[name];
   const modes = given.modes.map((entry) =>

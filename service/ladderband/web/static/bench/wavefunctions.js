@@ -5,7 +5,6 @@ import { wavefunctionsBody } from "./requests.js";
 import { Linear, ticks, top } from "./scale.js";
 import { bound, fixed } from "./text.js";
 
-const WIDTH = 560;
 const PANEL = 210;
 const LEFT = 52;
 const FOOT = 38;
@@ -24,14 +23,27 @@ export function showModes(state) {
   select.value = String(chosen);
 }
 
+let shown = null;
+
+export function bindWaves() {
+  new ResizeObserver(() => shown && draw(shown)).observe(byId("waves"));
+}
+
 export function showWaves(answer, label) {
-  const drawing = svg("svg", { viewBox: `0 0 ${WIDTH} ${2 * PANEL + FOOT}`, class: "waves-plot", role: "img",
-    "aria-label": `Levels and wavefunctions of ${label}: final state above, initial state below.` });
-  const x = new Linear(answer.coordinate[0], answer.coordinate.at(-1), LEFT, WIDTH - 8);
-  drawing.append(panel(answer, "final", x, 0), panel(answer, "initial", x, PANEL), foot(x));
-  byId("waves").replaceChildren(drawing);
+  shown = { answer, label };
+  draw(shown);
   const { bound: limit, evidence } = answer.accuracy;
   byId("waves-said").textContent = `Each value of a wavefunction within ${bound(Array.isArray(limit) ? top(limit.flat(2)) : limit)}, ${evidence}.`;
+}
+
+function draw({ answer, label }) {
+  const width = Math.max(240, byId("waves").clientWidth);
+  const height = 2 * PANEL + FOOT;
+  const drawing = svg("svg", { viewBox: `0 0 ${width} ${height}`, height, class: "waves-plot", role: "img",
+    "aria-label": `Levels and wavefunctions of ${label}: final state above, initial state below.` });
+  const x = new Linear(answer.coordinate[0], answer.coordinate.at(-1), LEFT, width - 8);
+  drawing.append(panel(answer, "final", x, 0), panel(answer, "initial", x, PANEL), foot(x));
+  byId("waves").replaceChildren(drawing);
 }
 
 function panel(answer, name, x, above) {
@@ -42,7 +54,7 @@ function panel(answer, name, x, above) {
   const group = svg("g", { class: `panel ${name}` });
   const marks = ticks(0, high, 4);
   for (const value of marks.values) {
-    group.append(svg("path", { class: "line", d: `M${LEFT} ${y.px(value)}H${WIDTH - 8}` }),
+    group.append(svg("path", { class: "line", d: `M${LEFT} ${y.px(value)}H${x.to}` }),
       svg("text", { class: "tick end", x: LEFT - 7, y: y.px(value) + 4 }, fixed(value, marks.decimals)));
   }
   group.append(svg("path", { class: "potential", d: curve(answer.coordinate, answer[`potential_${name}_cm1`], x, y, high) }));
@@ -50,9 +62,9 @@ function panel(answer, name, x, above) {
   const largest = Math.max(...functions.map((row) => top(row.map(Math.abs))));
   functions.forEach((row, v) => {
     const d = curve(answer.coordinate, row.map((psi) => levels[v] + (0.55 * spacing * psi) / largest), x, y, Infinity);
-    group.append(svg("path", { class: "level", d: `M${LEFT} ${y.px(levels[v])}H${WIDTH - 8}` }), svg("path", { class: "wave", d }));
+    group.append(svg("path", { class: "level", d: `M${LEFT} ${y.px(levels[v])}H${x.to}` }), svg("path", { class: "lobe", d: `${d}V${y.px(levels[v])}H${LEFT}Z` }), svg("path", { class: "wave", d }));
   });
-  group.append(svg("text", { class: "panel-name end", x: WIDTH - 12, y: above + 22 }, `${name} state`));
+  group.append(svg("text", { class: "panel-name end", x: x.to - 4, y: above + 22 }, `${name} state`));
   return group;
 }
 
@@ -72,12 +84,12 @@ function curve(xs, ys, x, y, limit) {
 function foot(x) {
   const group = svg("g");
   const base = 2 * PANEL - 4;
-  group.append(svg("path", { class: "rule", d: `M${LEFT} ${base}H${WIDTH - 8}` }));
+  group.append(svg("path", { class: "rule", d: `M${LEFT} ${base}H${x.to}` }));
   const marks = ticks(x.low, x.high, 8);
   for (const value of marks.values) {
     group.append(svg("text", { class: "tick middle", x: x.px(value), y: base + 17 }, fixed(value, marks.decimals)));
   }
-  group.append(svg("text", { class: "name end", x: WIDTH - 8, y: base + 36 }, "dimensionless coordinate of the final state"),
-    svg("text", { class: "name", x: 0, y: base + 36 }, "energy / cm⁻¹ above each minimum"));
+  group.append(svg("text", { class: "name end", x: x.to, y: base + 36 }, "coordinate q′ (final state)"),
+    svg("text", { class: "name", x: 0, y: base + 36 }, "energy / cm⁻¹"));
   return group;
 }
