@@ -47,7 +47,9 @@ class Watched:
         """A new tab; tabs with the same options share a browser's profile, and so its cache."""
         name = repr(options)
         if name not in self.contexts:
-            self.contexts[name] = self._context({"viewport": {"width": 1280, "height": 900}, **options})
+            self.contexts[name] = self._context(
+                {"viewport": {"width": 1280, "height": 900}, **options}
+            )
         page = opened(self.contexts[name], self.url + address)
         self.pages.append(page)
         return page

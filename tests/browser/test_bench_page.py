@@ -121,7 +121,14 @@ def test_every_control_is_reached_by_tab_and_none_holds_the_focus(page):
             break
         seen.append(name)
         page.keyboard.press("Tab")
-    for wanted in ("plot", "/origin_cm1", "temperature", "/modes/3/shift", "waves-mode", "take-copy"):
+    for wanted in (
+        "plot",
+        "/origin_cm1",
+        "temperature",
+        "/modes/3/shift",
+        "waves-mode",
+        "take-copy",
+    ):
         assert wanted in seen
     assert len(seen) == len(set(seen)) or len(seen) < 120
 
@@ -211,7 +218,9 @@ def test_absolute_scales_ask_for_a_moment_and_for_caution(page, watched):
     assert page.is_visible("#caution")
     page.fill("[data-member=moment]", "4.2")
     redrawn(page, before)
-    page.wait_for_function("() => document.querySelector('#accuracy').textContent.includes('L mol')")
+    page.wait_for_function(
+        "() => document.querySelector('#accuracy').textContent.includes('L mol')"
+    )
 
 
 def test_another_unit_keeps_the_band_in_view(page):
@@ -230,7 +239,9 @@ def test_wavefunctions_follow_the_chosen_mode(page):
     assert levels == 5 + 7
     before = page.inner_html("#waves")
     page.click("tbody[data-mode='2'] .ladders")
-    page.wait_for_function("before => document.querySelector('#waves').innerHTML !== before", arg=before)
+    page.wait_for_function(
+        "before => document.querySelector('#waves').innerHTML !== before", arg=before
+    )
     assert "in-plane bend" in page.get_attribute("#waves svg", "aria-label")
     assert "proven" in page.inner_text("#waves-said")
 

@@ -174,10 +174,22 @@ def mode(label, initial, final, shift):
 @pytest.mark.parametrize(
     ("text", "modes", "kind"),
     [
-        ("992\t923\t1.25\n608\t522\t-0.08", [("", "992", "923", "1.25"), ("", "608", "522", "-0.08")], None),
+        (
+            "992\t923\t1.25\n608\t522\t-0.08",
+            [("", "992", "923", "1.25"), ("", "608", "522", "-0.08")],
+            None,
+        ),
         ("ring;992,5;923;1,25\n", [("ring", "992.5", "923", "1.25")], None),
-        ("label,initial,final,huang_rhys\na,1000,900,0.5\n", [("a", "1000", "900", "0.5")], "huang_rhys"),
-        ("# c\nfinal,initial,displacement\n900,1000,0.5\n", [("", "1000", "900", "0.5")], "displacement"),
+        (
+            "label,initial,final,huang_rhys\na,1000,900,0.5\n",
+            [("a", "1000", "900", "0.5")],
+            "huang_rhys",
+        ),
+        (
+            "# c\nfinal,initial,displacement\n900,1000,0.5\n",
+            [("", "1000", "900", "0.5")],
+            "displacement",
+        ),
         ("500 480 0.1\n", [("", "500", "480", "0.1")], None),
     ],
 )

@@ -117,7 +117,9 @@ export class Plot {
   }
 
   #measured(measured) {
-    return svg("path", { class: "measured", d: measured ? path(measured.x, measured.y, this.x, this.y) : "" });
+    const inView = measured ? [...measured.x.keys()].filter((k) => this.inView(measured.x[k])) : [];
+    const [x, y] = inView.length ? [inView.map((k) => measured.x[k]), inView.map((k) => measured.y[k])] : [[], []];
+    return svg("path", { class: "measured", d: inView.length ? path(x, y, this.x, this.y) : "" });
   }
 
   // Below the foot: where each mode's own progression has its lines, higher teeth for more of it.

@@ -30,6 +30,7 @@ export class Stage {
   #pointed = null;
   #frame = 0;
   #changed = null;
+  #started = false;
 
   constructor(store) {
     this.store = store;
@@ -159,6 +160,10 @@ export class Stage {
       combs: combs(linesAnswer, this.linesBody, unit),
       yName: NAMES[bandsAnswer?.scale ?? "relative"],
     });
+    if (bandsAnswer && linesAnswer && !this.#started) {
+      this.#started = true;
+      performance.mark("first-plot");
+    }
     if (x) showRange(x[0], x.at(-1), unit);
     showReadout(this, this.#pointed);
     showAccuracy(this);

@@ -99,13 +99,13 @@ function refused(problem, store, use) {
     say([detail], true);
     byId("states-choices").replaceChildren(choiceForm(modes, store, use));
   } else {
-    say(errors ? errors.map((error) => `${place_(error.pointer)}${sentence(error)}`) : [detail], true);
+    say(errors ? errors.map((error) => `${whose(error.pointer)}${sentence(error)}`) : [detail], true);
   }
 }
 
-function place_(pointer) {
+function whose(pointer) {
   const [, state, , ...rest] = pointer.replace(/^#/, "").split("/");
-  return files[state] ? `${files[state].name}${rest.length ? `, ${rest.join("/")}` : ""}: ` : `${pointer}: `;
+  return files[state] ? `${files[state].name}${rest.length ? `, ${rest.join("/")}` : ""}: ` : "";
 }
 
 function choiceForm(modes, store, use) {
