@@ -18,8 +18,8 @@ ARGUMENTS = [
     "--disable-sync",
 ]
 CHROMIUM = shutil.which("chromium") or "/usr/bin/chromium"
-FIRST_PLOT = "() => document.querySelector('#plot .curve') && document.querySelector('#plot .cold')"
-"""True once band and lines are drawn."""
+SETTLED = "() => document.querySelector('#plot[aria-busy=false] .curve')"
+"""True once band and lines of the newest input are drawn."""
 
 
 @contextlib.contextmanager
@@ -35,5 +35,5 @@ def opened(context: BrowserContext, address: str) -> Page:
     """The page, once its first plot is there."""
     page = context.new_page()
     page.goto(address)
-    page.wait_for_function(FIRST_PLOT)
+    page.wait_for_function(SETTLED)
     return page

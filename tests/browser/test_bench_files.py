@@ -34,7 +34,8 @@ def test_a_measured_band_is_laid_over_the_computed_one(page, drop):
     assert "mine.csv: 130 points." in page.inner_text("#measured-said")
     assert page.input_value("#measured-unit") == "cm-1"
     assert page.is_visible("#key .key-measured")
-    highest = "() => Math.min(...document.querySelector('#plot .measured').getAttribute('d').slice(1).split('L').map((p) => Number(p.split(' ')[1])))"
+    highest = """() => Math.min(...document.querySelector('#plot .measured').getAttribute('d')
+        .slice(1).split('L').map((point) => Number(point.split(' ')[1])))"""
     full = page.evaluate(highest)
     curve = highest.replace(".measured", ".curve")
     assert full == pytest.approx(page.evaluate(curve), abs=2)  # scaled to the computed maximum
@@ -215,7 +216,8 @@ def check_json(data, what):
 
 def check_csv(data, what):
     rows = [row for row in csv.reader(io.StringIO(data.decode())) if not row[0].startswith("#")]
-    assert len(rows) > 300 and len({len(row) for row in rows}) == 1
+    assert len(rows) > 300
+    assert len({len(row) for row in rows}) == 1
 
 
 def check_ndjson(data, what):
@@ -228,9 +230,9 @@ def check_npy(data, what):
 
 
 def check_jcamp(data, what):
-    assert (
-        data.startswith(b"##TITLE=") and b"##XYDATA=" in data and data.rstrip().endswith(b"##END=")
-    )
+    assert data.startswith(b"##TITLE=")
+    assert b"##XYDATA=" in data
+    assert data.rstrip().endswith(b"##END=")
 
 
 def check_svg(data, what):

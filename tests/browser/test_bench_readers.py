@@ -58,7 +58,8 @@ def test_files_of_the_service_itself_are_read_to_the_last_digit(live_server, mea
     answer = httpx.post(address, json=body).json()
     text = httpx.post(address, params={"format": kind}, json=body).text
     found = measured(text)
-    assert found["unit"] == axis["unit"] and not found["guessed"]
+    assert found["unit"] == axis["unit"]
+    assert not found["guessed"]
     assert found["x"] == pytest.approx(answer["axis"]["values"], rel=1e-12)
     assert found["y"] == answer["intensity"]
 
@@ -164,7 +165,8 @@ def test_two_columns_in_the_forms_people_have(measured, text, unit, guessed):
 
 def test_columns_are_put_in_order_and_gaps_left_out(measured):
     found = measured("500,0.3,7\n400,0.1,7\n450,0.2,7\n")
-    assert found["x"] == [400, 450, 500] and found["y"] == [0.1, 0.2, 0.3]
+    assert found["x"] == [400, 450, 500]
+    assert found["y"] == [0.1, 0.2, 0.3]
 
 
 def mode(label, initial, final, shift):

@@ -11,6 +11,7 @@ import sys
 
 import pytest
 
+from browser.chromium import SETTLED
 from live_service import serving
 
 # --- text to take along ---
@@ -123,14 +124,11 @@ def as_a_job(page):
 
 
 def test_long_work_is_followed_as_a_job(page):
-    before = page.get_attribute("#plot .curve", "d")
     width = as_a_job(page)
     with page.expect_response("**/v1/bands") as got:
         page.fill("#width", width)
     assert got.value.status == 202
-    page.wait_for_function(
-        "before => document.querySelector('#plot .curve').getAttribute('d') !== before", arg=before
-    )
+    page.wait_for_function(SETTLED)
     assert page.inner_text("#progress") == ""
     assert width.rstrip("0") in page.inner_text("#take-text")
 

@@ -1,6 +1,7 @@
 // Fields and sliders of the transition: each writes its text into the state.
 
 import { byId } from "./dom.js";
+import { showText } from "./field_text.js";
 import { isAbsolute } from "./requests.js";
 import { convertedShifts, isExample } from "./state.js";
 import { UNITS, fromWavenumber, toWavenumber } from "./units.js";
@@ -60,7 +61,8 @@ function place(slider, text) {
 
 export function showControls(state) {
   for (const field of fields()) {
-    if (field.value !== state[field.dataset.member]) field.value = state[field.dataset.member];
+    if (field.tagName === "SELECT") field.value = state[field.dataset.member];
+    else showText(field, state[field.dataset.member]);
   }
   for (const slider of sliders()) {
     place(slider, state[slider.dataset.slides]);

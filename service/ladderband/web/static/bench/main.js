@@ -2,6 +2,7 @@
 
 import { bindControls, showControls } from "./controls.js";
 import { byId } from "./dom.js";
+import { bindTexts } from "./field_text.js";
 import { bindLines } from "./lines_table.js";
 import { bindMeasured } from "./measured.js";
 import { modeTable } from "./mode_text.js";
@@ -20,6 +21,7 @@ const stage = new Stage(store);
 const failing = new Set();
 
 bindTheme();
+bindTexts();
 bindWaves();
 bindControls(store);
 bindLines((line) => stage.select(line));
@@ -49,6 +51,7 @@ store.listen((state, kind) => {
 // --- asking ---
 
 function askAll() {
+  byId("plot").setAttribute("aria-busy", "true");
   askBand();
   put("Lines", "v1/lines", [linesBody(store.state), linesBody(store.state, true)], {
     answer: (answer, body) => {
@@ -88,7 +91,7 @@ function settled(kind, good) {
   if (waiting("Band", "Lines")) return;
   // both answers belong to the same input: do they fit the range?
   if (stage.refit()) askBand();
-  else stage.complete();
+  else stage.complete(() => byId("plot").setAttribute("aria-busy", "false"));
 }
 
 // --- states that come as a whole ---

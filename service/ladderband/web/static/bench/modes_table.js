@@ -1,6 +1,7 @@
 // The table of modes: cells, a slider and a small drawing of the two ladders for each mode.
 
 import { byId, el, svg } from "./dom.js";
+import { showText } from "./field_text.js";
 import { pastedBlock } from "./mode_text.js";
 import { MODE_MEMBERS, withMode, withoutMode } from "./state.js";
 
@@ -32,8 +33,7 @@ function show(table, state, store, onWaves) {
   state.modes.forEach((entry, index) => {
     const body = table.tBodies[index];
     for (const name of MODE_MEMBERS) {
-      const input = body.querySelector(`[data-cell=${name}]`);
-      if (input.value !== entry[name]) input.value = entry[name];
+      showText(body.querySelector(`[data-cell=${name}]`), entry[name]);
     }
     slide(body.querySelector("[type=range]"), entry.shift, state.shift);
     body.querySelector(".ladders").replaceChildren(ladders(entry, state.shift));
@@ -101,13 +101,13 @@ function removeButton(index, store) {
 // Two ladders: rungs as far apart as the wavenumbers say, the upper one moved by the shift.
 function ladders(entry, kind) {
   const [initial, final, shift] = [entry.initial, entry.final, entry.shift].map(Number);
-  const drawing = svg("svg", { viewBox: "0 0 64 30", width: 64, height: 30, "aria-hidden": "true" });
+  const drawing = svg("svg", { viewBox: "0 0 64 36", width: 64, height: 36, "aria-hidden": "true" });
   if (!(initial > 0 && final > 0 && Number.isFinite(shift))) return drawing;
-  const moved = -16 * Math.tanh((kind === "displacement" ? shift : Math.sqrt(2 * Math.max(shift, 0))) / 2);
-  const gap = 5.5 / Math.max(initial, final);
-  const rungs = (x, y, step) => [0, 1, 2].map((k) => `M${x - 6 - k} ${y - k * step}h${12 + 2 * k}`).join("");
-  drawing.append(svg("path", { class: "rungs initial", d: rungs(34, 28, gap * initial) }),
-    svg("path", { class: "rungs final", d: rungs(34 + moved, 13, gap * final) }));
+  const moved = -18 * Math.tanh((kind === "displacement" ? shift : Math.sqrt(2 * Math.max(shift, 0))) / 2);
+  const gap = 5 / Math.max(initial, final);
+  const rungs = (x, y, step) => [0, 1, 2].map((k) => `M${x - 8} ${y - k * step}h16`).join("");
+  drawing.append(svg("path", { class: "rungs initial", d: rungs(36, 33, gap * initial) }),
+    svg("path", { class: "rungs final", d: rungs(36 + moved, 14, gap * final) }));
   return drawing;
 }
 

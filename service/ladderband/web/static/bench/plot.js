@@ -2,7 +2,7 @@
 
 import { el, svg } from "./dom.js";
 import { Linear, nearest, ticks, top } from "./scale.js";
-import { fixed, short } from "./text.js";
+import { fixed, powerOfTen } from "./text.js";
 import { UNITS } from "./units.js";
 
 const LEFT = 50;
@@ -81,10 +81,11 @@ export class Plot {
       group.append(svg("path", { d: `M${LEFT} ${y}H${width - RIGHT}`, class: k ? "line" : "rule" }),
         svg("text", { x: LEFT - 7, y: y + 4, class: "tick end" }, fixed(value / 10 ** power, scaled.decimals)));
     });
-    const factor = power ? `${short(10 ** power, 1).replace("1×", "")} ` : "";
+    const [name, yUnit] = yName;
+    const scale = [power ? powerOfTen(power) : "", yUnit].filter(Boolean).join(" ");
     group.append(
       svg("text", { x: width - RIGHT, y: height - 6, class: "name end" }, `${UNITS[unit].name} / ${UNITS[unit].symbol}`),
-      svg("text", { x: 4, y: 14, class: "name" }, factor + yName));
+      svg("text", { x: 4, y: 14, class: "name" }, scale ? `${name} / ${scale}` : name));
     return group;
   }
 

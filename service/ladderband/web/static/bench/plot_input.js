@@ -2,6 +2,7 @@
 
 const LINE_PX = 7; // a line this near to the pointer is meant
 const DRAG_PX = 8;
+const SEEN_PX = 2.5; // lower sticks are not stepped on
 
 // on.point(x, lineIndex | null), on.select(lineIndex), on.leave(), on.zoom(low, high), on.fit()
 export function listen(plot, on) {
@@ -69,7 +70,7 @@ function key(plot, event, on) {
 // The next line to the right or left that is high enough to be seen; the strongest to begin with.
 function beside(plot, step) {
   const { lines, selected } = plot.scene;
-  const seen = (k) => plot.inView(lines.x[k]) && plot.foot - plot.stickTop(lines.intensity[k]) > 1;
+  const seen = (k) => plot.inView(lines.x[k]) && plot.foot - plot.stickTop(lines.intensity[k]) > SEEN_PX;
   const order = lines.byPosition.filter(seen);
   if (selected === null || !order.includes(selected)) return lines.strongest.find(seen) ?? null;
   return order[Math.min(order.length - 1, Math.max(0, order.indexOf(selected) + step))];

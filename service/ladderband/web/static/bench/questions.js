@@ -6,14 +6,19 @@ import { Latest } from "./latest.js";
 import { setProblem } from "./problems.js";
 
 const open = new Map(); // kind -> Latest
-const jobs = new Map(); // kind -> job that is being followed
+const jobs = new Map(); // kind -> {job, stop} while a job is followed
 
 // Asks for one kind of answer. bodies: the request, and what to ask instead when it is too much work.
 // on.answer(answer, body) or on.problem() is called, unless a newer question came in between.
 export function put(kind, path, bodies, on) {
   if (!open.has(kind)) open.set(kind, new Latest());
+  const stop = () => {
+    open.get(kind).stop();
+    settle(kind, new Problem({ type: "/stopped", detail: "You stopped the calculation." }));
+    on.problem();
+  };
   open.get(kind).later(async (signal) => {
-    const onJob = (job) => setJob(kind, job);
+    const onJob = (job) => setJob(kind, { job, stop });
     try {
       const [answer, body] = await firstAffordable(path, bodies, { signal, onJob });
       return () => {
@@ -58,20 +63,15 @@ export function bindKeyForm(again) {
   });
 }
 
-function setJob(kind, job) {
-  const before = jobs.get(kind);
-  if (!job && !before) return;
-  if (job) jobs.set(kind, job);
+function setJob(kind, followed) {
+  if (!followed && !jobs.has(kind)) return;
+  if (followed) jobs.set(kind, followed);
   else jobs.delete(kind);
   byId("progress").replaceChildren(...[...jobs].map(([name, current]) => progress(name, current)));
 }
 
-function progress(kind, job) {
+function progress(kind, { job, stop }) {
   const since = job.started ? ` for ${Math.max(0, Math.round((Date.now() - Date.parse(job.started)) / 1000))} s` : "";
-  const stop = () => {
-    open.get(kind).stop();
-    settle(kind, new Problem({ type: "/cancelled", detail: "You stopped the calculation." }));
-  };
   return el("p", {}, el("progress", { "aria-label": kind }), ` ${kind}: ${job.state}${since} `,
     el("button", { type: "button", onclick: stop }, `Stop: ${kind}`));
 }

@@ -3,7 +3,7 @@
 
 import { byId, el } from "./dom.js";
 import { nearest } from "./scale.js";
-import { bound, fixed, percent, quantaWords, short } from "./text.js";
+import { bound, fixed, percent, quantaWords, short, unitText } from "./text.js";
 import { UNITS, fromWavenumber, toWavenumber } from "./units.js";
 
 const HINT = "Point at the plot, or step through the lines with the arrow keys. Drag across it to zoom in.";
@@ -24,9 +24,9 @@ export function lineText(k, { lines, linesAnswer, labels, unit }) {
   const { first, others } = positions(lines.x[k], unit);
   const { accuracy } = linesAnswer;
   const part = el("p", { class: "of-line" },
-    el("strong", {}, lines.text[k]), ` ${quantaWords(lines.v_initial[k], lines.v_final[k], labels)} `,
+    el("strong", {}, lines.text[k]), `${quantaWords(lines.v_initial[k], lines.v_final[k], labels)}, at `,
     el("span", { class: "number" }, first), el("small", {}, ` (${others})`),
-    ` intensity ${short(lines.intensity[k], 4)}, within ${bound(boundAt(accuracy.bound, k))} `, seal(accuracy.evidence));
+    `, intensity ${short(lines.intensity[k], 4)}, within ${bound(boundAt(accuracy.bound, k))} `, seal(accuracy.evidence));
   return part;
 }
 
@@ -59,7 +59,7 @@ export function showAccuracy({ bandsAnswer, linesAnswer }) {
   const parts = [];
   if (bandsAnswer) {
     const { accuracy, intensity_unit: name } = bandsAnswer;
-    const unit = name.startsWith("1 ") ? "" : ` ${name}`; // "1 (largest value ...)" is no unit
+    const unit = name.startsWith("1 ") ? "" : ` ${unitText(name)}`; // "1 (largest value ...)" is no unit
     parts.push(el("span", {}, `Band within ${bound(largest(accuracy.bound))}${unit} `, seal(accuracy.evidence)));
   }
   if (linesAnswer) {

@@ -1,7 +1,7 @@
 // From the state to the bodies that are sent. What is no number goes out as it was typed, and the
 // service says what is wrong with it.
 
-const MAX_LINES = 1000;
+const MAX_LINES = 3000; // more would not be told apart, and take longer to draw
 const ABSOLUTE = {
   molar_absorption_coefficient: "absorption", cross_section: "absorption",
   photon_rate: "emission", radiated_power: "emission",

@@ -13,9 +13,12 @@ import { top } from "./scale.js";
 import { toWavenumber } from "./units.js";
 
 const NAMES = {
-  relative: "relative intensity", unit_area: "intensity, area 1",
-  molar_absorption_coefficient: "molar absorption coefficient / L mol⁻¹ cm⁻¹", cross_section: "cross-section / cm²",
-  photon_rate: "photon rate / s⁻¹ per unit of the axis", radiated_power: "radiated power / W per unit of the axis",
+  relative: ["relative intensity", ""],
+  unit_area: ["intensity, area 1", "per unit of the axis"],
+  molar_absorption_coefficient: ["molar absorption coefficient", "L mol⁻¹ cm⁻¹"],
+  cross_section: ["cross-section", "cm²"],
+  photon_rate: ["photon rate", "s⁻¹ per unit of the axis"],
+  radiated_power: ["radiated power", "W per unit of the axis"],
 };
 const SLACK = 0.05; // an automatic range is a little wider than it needs to be, and stays for a while
 const TOO_WIDE = 1.7;
@@ -173,8 +176,9 @@ export class Stage {
   }
 
   // Called when every answer to the newest input is in.
-  complete() {
+  complete(then) {
     requestAnimationFrame(() => {
+      then();
       if (this.#changed === null) return;
       performance.measure("change-to-redraw", { start: this.#changed, end: performance.now() });
       this.#changed = null;

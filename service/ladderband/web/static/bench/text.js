@@ -34,8 +34,14 @@ export function short(x, digits = 3) {
   const size = Math.abs(x);
   if (size >= 1e-3 && size < 1e5) return String(Number(x.toPrecision(digits))).replace("-", "−");
   const [mantissa, power] = x.toExponential(digits - 1).split("e");
-  return `${mantissa.replace("-", "−")}×10${power.startsWith("-") ? "⁻" : ""}${swap(power.slice(1), RAISED)}`;
+  return `${mantissa.replace("-", "−")}×${powerOfTen(Number(power))}`;
 }
+
+export const powerOfTen = (power) => `10${power < 0 ? "⁻" : ""}${swap(Math.abs(power), RAISED)}`;
+
+// "L mol^-1 cm^-1" as it is printed.
+export const unitText = (text) =>
+  text.replace(/\^(-?)(\d+)/g, (_, sign, figures) => (sign ? "⁻" : "") + swap(figures, RAISED));
 
 // A bound is rounded up, so that what is shown is still a bound.
 export function bound(x) {
