@@ -46,11 +46,12 @@ export function combs(answer, body, unit) {
 }
 
 const SEEN = 0.004; // of the strongest line: what is higher can be seen on the plot
-const NEARLY_ALL = 0.2; // missing at most: with more the list does not tell where the band ends
+const NEARLY_ALL = 0.03; // missing at most: with more the list does not tell where the band ends
 
 // The range that shows the band, cm^-1: where lines can be seen, or by the moments of the band.
 export function fittingRange(answer, linesAnswer, width, unit) {
-  const range = linesAnswer?.completeness.missing_at_most < NEARLY_ALL ? seenLines(linesAnswer) : byMoments(answer, width);
+  const complete = linesAnswer?.completeness.missing_at_most < NEARLY_ALL;
+  const range = complete ? seenLines(linesAnswer) : byMoments(answer, width);
   const margin = 1.6 * width + 0.03 * (range[1] - range[0]);
   return [Math.max(range[0] - margin, unit === "nm" ? 100 : -Infinity), range[1] + margin];
 }
@@ -63,7 +64,7 @@ function seenLines({ lines }) {
 
 function byMoments(answer, width) {
   const { mean_cm1: mean, standard_deviation_cm1: spread } = answer.moments;
-  const wide = 4.2 * Math.hypot(spread, width / 2.35);
+  const wide = 3.2 * Math.hypot(spread, width / 2.35);
   return [Math.max(answer.range_cm1[0], mean - wide), Math.min(answer.range_cm1[1], mean + wide)];
 }
 

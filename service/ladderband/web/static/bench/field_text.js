@@ -1,11 +1,11 @@
 // Long numbers in narrow fields: shortened while they are only looked at, whole while they are edited.
 
-const LONG = 9;
+const LONG = 8;
 
 function shortened(text) {
   const value = Number(text);
   if (text.length <= LONG || !Number.isFinite(value) || text.trim() === "") return text;
-  return String(Number(value.toPrecision(6)));
+  return String(Number(value.toPrecision(5)));
 }
 
 export function showText(input, text) {

@@ -7,7 +7,7 @@ import { UNITS } from "./units.js";
 
 const LEFT = 50;
 const RIGHT = 16;
-const HEAD = 26; // room for labels above the highest line
+const HEAD = 36; // room for the name of the axis and labels above the highest line
 const FOOT = 42;
 const COMB = 13;
 const LABEL_GAP = 7; // px of free room on each side of a label

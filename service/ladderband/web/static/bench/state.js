@@ -33,7 +33,7 @@ export function example() {
     range: null,
     scale: "relative",
     moment: "",
-    missing: "0.05",
+    missing: "0.02",
   };
 }
 
