@@ -95,8 +95,8 @@ def main() -> None:
         page = six_modes(browser, address + "/")
         shift = "tbody[data-mode='2'] [data-cell=shift]"
         cases = {
-            "six modes: a shift": (shift, lambda n: f"{0.5 + 0.01 * n:.2f}"),
-            "six modes: the width": ("#width", lambda n: str(120 + n)),
+            "six modes: a shift": (shift, lambda n: f"{0.51 + 0.01 * n:.2f}"),
+            "six modes: the width": ("#width", lambda n: str(121 + n)),
             "six modes: the temperature": ("#temperature", lambda n: str(250 + n)),
         }
         for name, (field, text) in cases.items():

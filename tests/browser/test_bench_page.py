@@ -5,6 +5,8 @@ from __future__ import annotations
 import httpx
 import pytest
 
+from browser.chromium import SETTLED
+
 EXAMPLE_MODES = 4
 REFUSED = "status of 422"
 
@@ -50,7 +52,7 @@ def test_the_page_says_what_the_service_says(page, watched):
         """async () => {
             const { linesBody } = await import('/bench/requests.js');
             const { example } = await import('/bench/state.js');
-            return linesBody(example());
+            return linesBody(example(), 0.02);
         }"""
     )
     answer = httpx.post(watched.url + "/v1/lines", json=body).json()
@@ -191,7 +193,8 @@ def test_a_wrong_cell_says_so_beside_it_and_the_last_plot_stays(page, watched):
     assert curve(page) == before
     assert page.is_visible("#stale")
     field.fill("0.4")
-    redrawn(page, before)
+    page.wait_for_function(SETTLED)
+    assert curve(page) != before
     assert page.locator(".wrong").count() == 0
     assert not page.is_visible("#stale")
 

@@ -40,7 +40,7 @@ export function combs(answer, body, unit) {
       name: String(k + 1),
       label: body.modes[k].label ?? "",
       teeth: mode.quanta_distribution
-        .map((share, n) => ({ share, x: fromWavenumber(body.origin_cm1 + direction * n * body.modes[k].wavenumber_final_cm1, unit) }))
+        .map((share, n) => ({ share, x: fromWavenumber((body.origin_cm1 ?? 0) + direction * n * body.modes[k].wavenumber_final_cm1, unit) }))
         .filter((tooth, n) => tooth.share > WORTH_A_TOOTH || n === 0),
     }));
 }

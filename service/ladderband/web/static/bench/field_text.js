@@ -5,7 +5,9 @@ const LONG = 8;
 function shortened(text) {
   const value = Number(text);
   if (text.length <= LONG || !Number.isFinite(value) || text.trim() === "") return text;
-  return String(Number(value.toPrecision(5)));
+  // as many figures as fit; a power of ten is never cut off
+  const tries = [5, 4, 3, 2].map((figures) => String(Number(value.toPrecision(figures))));
+  return tries.find((short) => short.length <= LONG) ?? tries.at(-1);
 }
 
 export function showText(input, text) {

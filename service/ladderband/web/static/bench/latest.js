@@ -12,7 +12,7 @@ export class Latest {
   // The pause grows with the time an answer takes, so that a slow service is not flooded.
   later(work) {
     this.stop();
-    const pause = Math.min(LONGEST_MS, Math.max(SHORTEST_MS, this.#took / 2));
+    const pause = Math.min(LONGEST_MS, Math.max(SHORTEST_MS, this.#took / 4));
     this.#timer = setTimeout(() => {
       this.#timer = 0;
       this.#run(work);

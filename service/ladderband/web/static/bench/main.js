@@ -2,13 +2,14 @@
 
 import { bindControls, showControls } from "./controls.js";
 import { byId } from "./dom.js";
+import { Fineness } from "./fineness.js";
 import { bindTexts } from "./field_text.js";
 import { bindLines } from "./lines_table.js";
 import { bindMeasured } from "./measured.js";
 import { modeTable } from "./mode_text.js";
 import { bindModes } from "./modes_table.js";
 import { bindKeyForm, put, waiting } from "./questions.js";
-import { bandsBody, linesBody } from "./requests.js";
+import { bandsBody } from "./requests.js";
 import { Stage } from "./stage.js";
 import { Store, decode, encode, example } from "./state.js";
 import { bindStates } from "./state_files.js";
@@ -18,7 +19,8 @@ import { bindWaves, showModes, showWaves, wavesBody } from "./wavefunctions.js";
 
 const store = new Store(decode(location.hash.slice(1)) ?? example());
 const stage = new Stage(store);
-const failing = new Set();
+const failing = new Set(); // kinds whose newest request was refused
+const fineness = new Fineness();
 
 bindTheme();
 bindTexts();
@@ -40,31 +42,39 @@ byId("start-over").addEventListener("click", () => load(example()));
 byId("paste-use").addEventListener("click", usePasted);
 
 store.listen((state, kind) => {
-  if (kind === "slide" || kind === "commit") stage.changed();
+  const began = performance.now();
   showControls(state);
   showModesTable(state);
   showModes(state);
   if (kind === "commit" || kind === "load") record(state);
-  askAll();
+  if (askAll()) stage.changedAt(began);
 });
 
 // --- asking ---
 
+// True when there was something new to ask for.
 function askAll() {
   byId("plot").setAttribute("aria-busy", "true");
-  askBand();
-  put("Lines", "v1/lines", [linesBody(store.state), linesBody(store.state, true)], {
+  const asked = [askBand(), askLines()].includes(true);
+  askWaves();
+  finish();
+  return asked;
+}
+
+function askLines() {
+  return put("Lines", "v1/lines", fineness.bodies(store.state), {
     answer: (answer, body) => {
       stage.setLines(answer, body);
+      if (fineness.judge(answer, body, store.state)) askLines();
       settled("Lines", true);
     },
     problem: () => settled("Lines", false),
+    slow: () => stage.setLines(null, null), // those of the input before do not belong to the new band
   });
-  askWaves();
 }
 
 function askBand() {
-  put("Band", "v1/bands", [bandsBody(store.state, stage.axis(store.state))], {
+  return put("Band", "v1/bands", [bandsBody(store.state, stage.axis(store.state))], {
     answer: (answer, body) => {
       stage.setBand(answer, body);
       settled("Band", true);
@@ -85,11 +95,16 @@ function askWaves() {
 function settled(kind, good) {
   if (good) failing.delete(kind);
   else failing.add(kind);
-  byId("stale").hidden = !failing.size || !(stage.bandsAnswer || stage.linesAnswer);
-  byId("plot").classList.toggle("is-stale", failing.size > 0);
   showTake();
+  finish();
+}
+
+// Both answers belong to the same input now: is all of it shown, and does it fit the range?
+function finish() {
   if (waiting("Band", "Lines")) return;
-  // both answers belong to the same input: do they fit the range?
+  if (failing.has("Lines") && !failing.has("Band")) stage.setLines(null, null);
+  byId("stale").hidden = !failing.has("Band") || !stage.bandsAnswer;
+  byId("plot").classList.toggle("is-stale", failing.has("Band"));
   if (stage.refit()) askBand();
   else stage.complete(() => byId("plot").setAttribute("aria-busy", "false"));
 }
@@ -98,6 +113,7 @@ function settled(kind, good) {
 
 function load(state) {
   stage.forgetRange();
+  fineness.coarse = true;
   store.change(state, "load");
 }
 

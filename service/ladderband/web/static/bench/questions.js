@@ -5,20 +5,34 @@ import { byId, el } from "./dom.js";
 import { Latest } from "./latest.js";
 import { setProblem } from "./problems.js";
 
+const TOO_MUCH = ["cost-limit", "deadline"];
+const SLOW_MS = 400; // after this time the page says that it is waiting
+
 const open = new Map(); // kind -> Latest
-const jobs = new Map(); // kind -> {job, stop} while a job is followed
+const asked = new Map(); // kind -> the request that is asked or was answered, as text
+const waits = new Map(); // kind -> {state, since, stop} of what takes long
 
 // Asks for one kind of answer. bodies: the request, and what to ask instead when it is too much work.
-// on.answer(answer, body) or on.problem() is called, unless a newer question came in between.
+// on.answer(answer, body), on.problem() and on.slow() are called, unless a newer question came in
+// between. A request that was answered already is not asked again: then false is returned.
 export function put(kind, path, bodies, on) {
+  const text = JSON.stringify(bodies);
+  if (asked.get(kind) === text) return false;
+  asked.set(kind, text);
   if (!open.has(kind)) open.set(kind, new Latest());
   const stop = () => {
     open.get(kind).stop();
     settle(kind, new Problem({ type: "/stopped", detail: "You stopped the calculation." }));
     on.problem();
   };
+  const onJob = (job) => setWait(kind, { state: job.state, since: job.started && Date.parse(job.started), stop });
   open.get(kind).later(async (signal) => {
-    const onJob = (job) => setJob(kind, { job, stop });
+    setWait(kind, null);
+    const slow = setTimeout(() => {
+      setWait(kind, { state: "working", since: null, stop });
+      on.slow?.();
+    }, SLOW_MS);
+    signal.addEventListener("abort", () => clearTimeout(slow));
     try {
       const [answer, body] = await firstAffordable(path, bodies, { signal, onJob });
       return () => {
@@ -31,8 +45,11 @@ export function put(kind, path, bodies, on) {
         settle(kind, problem);
         on.problem();
       };
+    } finally {
+      clearTimeout(slow);
     }
   });
+  return true;
 }
 
 async function firstAffordable(path, bodies, options) {
@@ -40,13 +57,14 @@ async function firstAffordable(path, bodies, options) {
   try {
     return [await (await ask(path, body, options)).json(), body];
   } catch (problem) {
-    if (problem.slug !== "cost-limit" || !cheaper.length) throw problem;
+    if (!TOO_MUCH.includes(problem.slug) || !cheaper.length) throw problem;
     return firstAffordable(path, cheaper, options);
   }
 }
 
 function settle(kind, problem) {
-  setJob(kind, null);
+  if (problem) asked.delete(kind); // asking once more may help
+  setWait(kind, null);
   if (problem?.slug === "unauthorized") byId("key-form").hidden = false;
   setProblem(kind, problem?.members ?? null);
 }
@@ -63,15 +81,15 @@ export function bindKeyForm(again) {
   });
 }
 
-function setJob(kind, followed) {
-  if (!followed && !jobs.has(kind)) return;
-  if (followed) jobs.set(kind, followed);
-  else jobs.delete(kind);
-  byId("progress").replaceChildren(...[...jobs].map(([name, current]) => progress(name, current)));
+function setWait(kind, wait) {
+  if (!wait && !waits.has(kind)) return;
+  if (wait) waits.set(kind, wait);
+  else waits.delete(kind);
+  byId("progress").replaceChildren(...[...waits].map(([name, current]) => progress(name, current)));
 }
 
-function progress(kind, { job, stop }) {
-  const since = job.started ? ` for ${Math.max(0, Math.round((Date.now() - Date.parse(job.started)) / 1000))} s` : "";
-  return el("p", {}, el("progress", { "aria-label": kind }), ` ${kind}: ${job.state}${since} `,
+function progress(kind, { state, since, stop }) {
+  const time = since ? ` for ${Math.max(0, Math.round((Date.now() - since) / 1000))} s` : "";
+  return el("p", {}, el("progress", { "aria-label": kind }), ` ${kind}: ${state}${time} `,
     el("button", { type: "button", onclick: stop }, `Stop: ${kind}`));
 }

@@ -40,10 +40,13 @@ export function transitionBody(state) {
   return body;
 }
 
-export function linesBody(state, best = false) {
-  const body = { ...transitionBody(state), max_lines: MAX_LINES };
-  return best ? body : { ...body, tolerance: value(state.missing) };
+// What may be missing is a share of the intensity; without one: the best list within the limit.
+export function linesBody(state, missing) {
+  return { ...transitionBody(state), tolerance: missing, max_lines: MAX_LINES };
 }
+
+// The list is as long as it may be: a finer enumeration would list the same lines.
+export const isFull = (answer) => answer.enumerated_lines >= MAX_LINES;
 
 export function bandsBody(state, axis) {
   const line_shape = { kind: state.shape, fwhm_cm1: value(state.width) };

@@ -81,8 +81,8 @@ export class Stage {
   }
 
   // Remembers when the input changed, for the time from there to the redrawn plot.
-  changed() {
-    this.#changed ??= performance.now();
+  changedAt(time) {
+    this.#changed ??= time;
   }
 
   setBand(answer, body) {
@@ -104,9 +104,10 @@ export class Stage {
     return true;
   }
 
+  // null: there are none that belong to the band
   setLines(answer, body) {
     Object.assign(this, { linesAnswer: answer, linesBody: body });
-    this.labels = body.modes.map((mode) => mode.label);
+    this.labels = body?.modes.map((mode) => mode.label) ?? [];
     this.#columns();
     this.redraw();
   }
@@ -171,7 +172,7 @@ export class Stage {
     showReadout(this, this.#pointed);
     showAccuracy(this);
     showWarnings([bandsAnswer, linesAnswer]);
-    if (linesAnswer) showLines(this);
+    showLines(this);
     showKey(measured, combs(linesAnswer, this.linesBody, unit).length > 0);
   }
 
