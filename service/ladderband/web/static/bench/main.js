@@ -106,7 +106,7 @@ function finish() {
   byId("stale").hidden = !failing.has("Band") || !stage.bandsAnswer;
   byId("plot").classList.toggle("is-stale", failing.has("Band"));
   if (stage.refit()) askBand();
-  else stage.complete(() => byId("plot").setAttribute("aria-busy", "false"));
+  else stage.complete(() => byId("plot").setAttribute("aria-busy", String(waiting("Band", "Lines"))));
 }
 
 // --- states that come as a whole ---

@@ -69,7 +69,7 @@ function settle(kind, problem) {
   setProblem(kind, problem?.members ?? null);
 }
 
-export const waiting = (...kinds) => kinds.some((kind) => open.get(kind)?.busy);
+export const waiting = (...kinds) => kinds.some((kind) => open.get(kind)?.busy === true);
 
 export function bindKeyForm(again) {
   byId("key-form").addEventListener("submit", (event) => {

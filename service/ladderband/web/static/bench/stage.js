@@ -178,11 +178,11 @@ export class Stage {
 
   // Called when every answer to the newest input is in.
   complete(then) {
+    const began = this.#changed;
+    this.#changed = null;
     requestAnimationFrame(() => {
       then();
-      if (this.#changed === null) return;
-      performance.measure("change-to-redraw", { start: this.#changed, end: performance.now() });
-      this.#changed = null;
+      if (began !== null) performance.measure("change-to-redraw", { start: began, end: performance.now() });
     });
   }
 }
