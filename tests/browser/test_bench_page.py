@@ -180,11 +180,13 @@ def test_dragging_zooms_and_fit_comes_back(page):
 
 def test_a_wrong_cell_says_so_beside_it_and_the_last_plot_stays(page, watched):
     watched.expected.append(REFUSED)
+    page.select_option("#waves-mode", "1")  # so that lines, band and wavefunctions complain
     before = curve(page)
     cell(page, 1, "shift").fill("-1")
     page.wait_for_selector("tbody[data-mode='1'] .wrong")
-    note = page.locator("tbody[data-mode='1'] .wrong")
-    assert note.count() == 1  # although several requests complained
+    page.wait_for_function(SETTLED)
+    note = page.locator(".wrong")
+    assert note.count() == 1  # although three requests complained
     assert "-1 is outside the allowed range" in note.inner_text()
     assert "0 ≤ x ≤ 2000" in note.inner_text()
     field = cell(page, 1, "shift")
@@ -258,6 +260,37 @@ def test_a_click_in_the_table_selects_the_line_in_the_plot(page):
     assert page.get_attribute("#lines [data-line] >> nth=3", "aria-pressed") == "true"
     name = page.inner_text("#lines [data-line] >> nth=3")
     assert page.inner_text("#readout").startswith(name)
+
+
+def test_long_numbers_are_whole_only_while_they_are_edited(page):
+    field = cell(page, 1, "final")
+    field.fill("774.123456789")
+    page.focus("#width")
+    assert field.input_value() == "774.123"
+    page.wait_for_function(SETTLED)
+    assert "774.123456789" in page.inner_text("#take-text")
+    field.focus()
+    assert field.input_value() == "774.123456789"
+    cell(page, 1, "shift").fill("1.23456789e-12")
+    page.focus("#width")
+    assert cell(page, 1, "shift").input_value() == "1.2e-12"
+
+
+def test_lines_that_are_refused_are_not_those_of_the_band_before(page, watched):
+    """The band is new, the lines are not to be had: none are shown rather than old ones."""
+    watched.expected.append(REFUSED)
+    refusal = {"type": "/problems/domain", "status": 422, "detail": "No lines today."}
+    page.route("**/v1/lines", lambda route: route.fulfill(status=422, json=refusal))
+    before = curve(page)
+    page.fill("#temperature", "500")
+    page.wait_for_function(
+        "() => document.querySelector('#problems').textContent.includes('No lines')"
+    )
+    page.wait_for_function(SETTLED)
+    assert curve(page) != before
+    assert page.get_attribute("#plot .cold", "d") == ""
+    assert page.locator("#lines tbody tr").count() == 0
+    assert not page.is_visible("#stale")
 
 
 # --- the state in the address ---

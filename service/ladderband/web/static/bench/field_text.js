@@ -1,19 +1,23 @@
 // Long numbers in narrow fields: shortened while they are only looked at, whole while they are edited.
 
-const LONG = 8;
+const NARROW = 7; // characters that a cell of the table shows
+const WIDE = 12;
+const FIGURES = [10, 9, 8, 7, 6, 5, 4, 3, 2];
 
-function shortened(text) {
+// As many figures as fit; a power of ten is never cut off.
+function shortened(text, input) {
+  const room = input.closest("table") ? NARROW : WIDE;
   const value = Number(text);
-  if (text.length <= LONG || !Number.isFinite(value) || text.trim() === "") return text;
-  // as many figures as fit; a power of ten is never cut off
-  const tries = [5, 4, 3, 2].map((figures) => String(Number(value.toPrecision(figures))));
-  return tries.find((short) => short.length <= LONG) ?? tries.at(-1);
+  if (text.length <= room || !Number.isFinite(value) || text.trim() === "") return text;
+  const tries = FIGURES.map((figures) => String(Number(value.toPrecision(figures))));
+  return tries.find((short) => short.length <= room) ?? tries.at(-1);
 }
 
 export function showText(input, text) {
   input.dataset.text = text;
-  input.title = shortened(text) === text ? "" : text;
-  const shown = document.activeElement === input ? text : shortened(text);
+  const short = shortened(text, input);
+  input.title = short === text ? "" : text;
+  const shown = document.activeElement === input ? text : short;
   if (input.value !== shown) input.value = shown;
 }
 
@@ -22,6 +26,6 @@ export function bindTexts() {
     if (target.dataset?.text !== undefined) target.value = target.dataset.text;
   });
   document.addEventListener("focusout", ({ target }) => {
-    if (target.dataset?.text !== undefined) target.value = shortened(target.dataset.text);
+    if (target.dataset?.text !== undefined) target.value = shortened(target.dataset.text, target);
   });
 }

@@ -15,7 +15,7 @@ import { Store, decode, encode, example } from "./state.js";
 import { bindStates } from "./state_files.js";
 import { bindTake } from "./take.js";
 import { bindTheme } from "./theme.js";
-import { bindWaves, showModes, showWaves, wavesBody } from "./wavefunctions.js";
+import { bindWaves, chosenMode, showModes, showWaves, wavesBody } from "./wavefunctions.js";
 
 const store = new Store(decode(location.hash.slice(1)) ?? example());
 const stage = new Stage(store);
@@ -88,6 +88,7 @@ function askWaves() {
   put("Wavefunctions", "v1/wavefunctions", [wavesBody(store.state)], {
     answer: (answer) => showWaves(answer, `mode ${label}`),
     problem: () => {},
+    pointer: (pointer) => pointer.replace("#/mode/", `#/modes/${chosenMode(store.state)}/`),
   });
 }
 

@@ -62,7 +62,7 @@ export class Plot {
 
   #grid(width, height) {
     const group = svg("g", { class: "grid" });
-    const { unit, yName } = this.scene;
+    const { unit, xName, yName } = this.scene;
     const across = ticks(this.x.low, this.x.high, (width - LEFT) / 90);
     const base = height - FOOT;
     group.append(svg("path", { d: `M${LEFT} ${base}H${width - RIGHT}`, class: "rule" }));
@@ -84,7 +84,7 @@ export class Plot {
     const [name, yUnit] = yName;
     const scale = [power ? powerOfTen(power) : "", yUnit].filter(Boolean).join(" ");
     group.append(
-      svg("text", { x: width - RIGHT, y: height - 6, class: "name end" }, `${UNITS[unit].name} / ${UNITS[unit].symbol}`),
+      svg("text", { x: width - RIGHT, y: height - 6, class: "name end" }, `${xName} / ${UNITS[unit].symbol}`),
       svg("text", { x: 4, y: 14, class: "name" }, scale ? `${name} / ${scale}` : name));
     return group;
   }

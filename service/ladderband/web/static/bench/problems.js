@@ -12,8 +12,8 @@ export function sentence(error) {
 }
 
 // Sets (or with null, takes away) the problem of one kind of request.
-export function setProblem(kind, problem) {
-  if (problem) current.set(kind, problem);
+export function setProblem(kind, problem, rename = (pointer) => pointer) {
+  if (problem) current.set(kind, { ...problem, errors: problem.errors?.map((e) => ({ ...e, pointer: rename(e.pointer) })) });
   else current.delete(kind);
   const found = collected();
   const signature = JSON.stringify(found.map(({ text, pointer }) => [text, pointer]));

@@ -22,7 +22,7 @@ export function put(kind, path, bodies, on) {
   if (!open.has(kind)) open.set(kind, new Latest());
   const stop = () => {
     open.get(kind).stop();
-    settle(kind, new Problem({ type: "/stopped", detail: "You stopped the calculation." }));
+    settle(kind, new Problem({ type: "/stopped", detail: "You stopped the calculation." }), on);
     on.problem();
   };
   const onJob = (job) => setWait(kind, { state: job.state, since: job.started && Date.parse(job.started), stop });
@@ -36,13 +36,13 @@ export function put(kind, path, bodies, on) {
     try {
       const [answer, body] = await firstAffordable(path, bodies, { signal, onJob });
       return () => {
-        settle(kind, null);
+        settle(kind, null, on);
         on.answer(answer, body);
       };
     } catch (problem) {
       if (!(problem instanceof Problem)) throw problem;
       return () => {
-        settle(kind, problem);
+        settle(kind, problem, on);
         on.problem();
       };
     } finally {
@@ -62,11 +62,12 @@ async function firstAffordable(path, bodies, options) {
   }
 }
 
-function settle(kind, problem) {
+// on.pointer: where a member of this kind of request is found on the page, if under another name.
+function settle(kind, problem, on) {
   if (problem) asked.delete(kind); // asking once more may help
   setWait(kind, null);
   if (problem?.slug === "unauthorized") byId("key-form").hidden = false;
-  setProblem(kind, problem?.members ?? null);
+  setProblem(kind, problem?.members ?? null, on.pointer);
 }
 
 export const waiting = (...kinds) => kinds.some((kind) => open.get(kind)?.busy === true);

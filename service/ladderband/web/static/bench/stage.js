@@ -10,7 +10,7 @@ import { listen, zoomed } from "./plot_input.js";
 import { lineText, bandText, showAccuracy, showReadout, showWarnings, speak } from "./readout.js";
 import { value } from "./requests.js";
 import { top } from "./scale.js";
-import { toWavenumber } from "./units.js";
+import { UNITS, toWavenumber } from "./units.js";
 
 const NAMES = {
   relative: ["relative intensity", ""],
@@ -162,6 +162,7 @@ export class Stage {
       top: Math.max(height, measured ? top(measured.y) : 0),
       band: bandsAnswer && { x, y: bandsAnswer.intensity },
       combs: combs(linesAnswer, this.linesBody, unit),
+      xName: this.bandsBody?.process === "photoelectron" && unit !== "nm" ? "ionisation energy" : UNITS[unit].name,
       yName: NAMES[bandsAnswer?.scale ?? "relative"],
     });
     if (bandsAnswer && linesAnswer && !this.#started) {
