@@ -316,16 +316,43 @@ def test_a_link_opens_the_same_state(page, watched):
 
 
 def test_reload_and_back_bring_states_back(page):
-    cell(page, 0, "label").fill("first")
-    page.keyboard.press("Tab")
-    cell(page, 0, "label").fill("second")
-    page.keyboard.press("Tab")
+    for text in ("first", "second"):
+        cell(page, 0, "label").fill(text)
+        steps = page.evaluate("history.length")
+        page.keyboard.press("Tab")
+        page.wait_for_function("steps => history.length > steps", arg=steps)
     page.go_back()
     assert cell(page, 0, "label").input_value() == "first"
     page.reload()
     assert cell(page, 0, "label").input_value() == "first"
     page.go_forward()
     assert cell(page, 0, "label").input_value() == "second"
+
+
+def test_what_was_typed_survives_a_reload_without_leaving_the_field(page):
+    steps = page.evaluate("history.length")
+    cell(page, 0, "label").fill("half")
+    page.wait_for_function("steps => history.length > steps", arg=steps)
+    page.reload()
+    assert cell(page, 0, "label").input_value() == "half"
+
+
+def test_the_wheel_zooms_where_the_pointer_is_and_is_one_step_back(page):
+    page.wait_for_function(SETTLED)
+    steps = page.evaluate("history.length")
+    box = page.locator("#plot").bounding_box()
+    page.mouse.move(box["x"] + 300, box["y"] + 100)
+    page.mouse.wheel(0, -300)
+    page.wait_for_timeout(200)
+    assert page.evaluate("history.length") == steps  # without the focus the wheel is the page's
+    page.focus("#plot")
+    before = curve(page)
+    for _ in range(4):
+        page.mouse.wheel(0, -100)
+    redrawn(page, before)
+    page.wait_for_function("steps => history.length === steps + 1", arg=steps)
+    page.wait_for_function(SETTLED)
+    assert float(page.input_value("#range-stop")) - float(page.input_value("#range-start")) < 4000
 
 
 @pytest.mark.parametrize("fragment", ["nonsense", "e30", "%00%ff", "eyJtb2RlcyI6W119"])

@@ -1,5 +1,6 @@
-// The bench page: binds its parts together and keeps the state in the address.
+// The bench page: binds its parts together.
 
+import { bindAddress, link, record, stateInAddress } from "./address.js";
 import { bindControls, showControls } from "./controls.js";
 import { byId } from "./dom.js";
 import { Fineness } from "./fineness.js";
@@ -11,13 +12,13 @@ import { bindModes } from "./modes_table.js";
 import { bindKeyForm, put, waiting } from "./questions.js";
 import { bandsBody } from "./requests.js";
 import { Stage } from "./stage.js";
-import { Store, decode, encode, example } from "./state.js";
+import { Store, example } from "./state.js";
 import { bindStates } from "./state_files.js";
 import { bindTake } from "./take.js";
 import { bindTheme } from "./theme.js";
 import { bindWaves, chosenMode, showModes, showWaves, wavesBody } from "./wavefunctions.js";
 
-const store = new Store(decode(location.hash.slice(1)) ?? example());
+const store = new Store(stateInAddress());
 const stage = new Stage(store);
 const failing = new Set(); // kinds whose newest request was refused
 const fineness = new Fineness();
@@ -30,7 +31,11 @@ bindLines((line) => stage.select(line));
 bindMeasured(byId("plot"), () => stage.redraw());
 bindStates(store, useTransition);
 bindKeyForm(askAll);
-const showTake = bindTake(() => ({ bands: stage.bandsBody, lines: stage.linesBody }));
+bindAddress((state) => {
+  stage.forgetRange();
+  store.change(state, "view");
+});
+const showTake = bindTake(() => ({ bands: stage.bandsBody, lines: stage.linesBody, link: link(store.state) }));
 const showModesTable = bindModes(store, (index) => {
   byId("waves-mode").value = String(index);
   askWaves();
@@ -46,7 +51,7 @@ store.listen((state, kind) => {
   showControls(state);
   showModesTable(state);
   showModes(state);
-  if (kind === "commit" || kind === "load") record(state);
+  if (kind !== "view") record(state, kind !== "slide");
   if (askAll()) stage.changedAt(began);
 });
 
@@ -149,25 +154,7 @@ function usePasted() {
   }
 }
 
-// --- history ---
-
-function record(state) {
-  const address = `#${encode(state)}`;
-  if (address !== location.hash) history.pushState(null, "", address);
-  showTake();
-}
-
-function fromAddress() {
-  stage.forgetRange();
-  store.change(decode(location.hash.slice(1)) ?? example(), "view");
-}
-
 // a file dropped beside its place must not replace the page
 for (const name of ["dragover", "drop"]) window.addEventListener(name, (event) => event.preventDefault());
-
-window.addEventListener("popstate", fromAddress);
-window.addEventListener("pagehide", () => {
-  if (location.hash || encode(store.state) !== encode(example())) history.replaceState(null, "", `#${encode(store.state)}`);
-});
 
 store.change({}, "view");

@@ -2,12 +2,14 @@
 
 const LINE_PX = 7; // a line this near to the pointer is meant
 const DRAG_PX = 8;
+const REST_MS = 400; // after this pause the wheel has come to rest
 const SEEN_PX = 2.5; // lower sticks are not stepped on
 
-// on.point(x, lineIndex | null), on.select(lineIndex), on.leave(), on.zoom(low, high), on.fit()
+// on.point(x, lineIndex | null), on.select(lineIndex), on.leave(), on.zoom(low, high, kind), on.rest(), on.fit()
 export function listen(plot, on) {
   const { place } = plot;
   let start = null;
+  let turning = 0;
   const at = (event) => event.clientX - place.getBoundingClientRect().left;
 
   place.addEventListener("pointerdown", (event) => {
@@ -42,7 +44,9 @@ export function listen(plot, on) {
     event.preventDefault();
     const middle = plot.x.at(at(event));
     const factor = event.deltaY > 0 ? 1.25 : 0.8;
-    on.zoom(middle - (middle - plot.x.low) * factor, middle + (plot.x.high - middle) * factor);
+    on.zoom(middle - (middle - plot.x.low) * factor, middle + (plot.x.high - middle) * factor, "slide");
+    clearTimeout(turning);
+    turning = setTimeout(on.rest, REST_MS);
   }, { passive: false });
   place.addEventListener("keydown", (event) => key(plot, event, on));
 }

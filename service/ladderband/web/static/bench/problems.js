@@ -21,6 +21,9 @@ export function setProblem(kind, problem, rename = (pointer) => pointer) {
   shown = signature;
   clear();
   for (const entry of found) show(entry);
+  // notes beside fields are heard as well; those in the list of problems are an alert already
+  const beside = found.filter(({ field }) => field).map(({ field, text }) => `${field.dataset.name ?? ""} ${text}`);
+  byId("heard").textContent = beside.join(" ");
 }
 
 // Each thing that is wrong once, although several requests complain about it.

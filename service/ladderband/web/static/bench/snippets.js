@@ -5,9 +5,12 @@ import { apiKey, base } from "./api.js";
 const KEY_NOTE = "LADDERBAND_KEY"; // the key itself never gets into a copied text
 
 export function curl(path, body) {
-  const quoted = JSON.stringify(body, null, 1).replaceAll("'", `'\\''`);
   const key = apiKey() ? ` -H "Authorization: Bearer $${KEY_NOTE}"` : "";
-  return `curl -s '${new URL(path, base)}' -H 'Content-Type: application/json'${key} -d '${quoted}'`;
+  // a here-document needs no quoting and may be of any length
+  return `curl -s '${new URL(path, base)}' -H 'Content-Type: application/json'${key} --data-binary @- <<'END'
+${JSON.stringify(body, null, 1)}
+END
+`;
 }
 
 export function python(path, body) {

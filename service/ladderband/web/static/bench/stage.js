@@ -42,7 +42,8 @@ export class Stage {
       point: (x, line) => this.#point({ x, line }),
       leave: () => this.#point(null),
       select: (line) => this.select(line),
-      zoom: (low, high) => this.zoom(low, high),
+      zoom: (low, high, kind) => this.zoom(low, high, kind),
+      rest: () => this.store.change({}, "commit"),
       fit: () => this.fit(),
     });
     byId("zoom-in").addEventListener("click", () => this.plot.scene && this.zoom(...zoomed(this.plot, 0.6)));
@@ -66,9 +67,10 @@ export class Stage {
     return { unit: state.unit, start, stop, points: pointsFor(span, width) };
   }
 
-  zoom(low, high) {
+  zoom(low, high, kind = "commit") {
     const text = (x) => String(Number(x.toPrecision(7)));
-    this.store.change({ range: [text(low), text(high)] }, "commit");
+    Object.assign(this.plot.x, { low, high }); // a second turn of the wheel goes on from here
+    this.store.change({ range: [text(low), text(high)] }, kind);
   }
 
   fit() {

@@ -12,7 +12,7 @@ const FORMATS = {
 const ENDINGS = { jcamp: "jdx" };
 const PICTURES = { width: 960, height: 480 };
 
-// bodies() gives {bands, lines}: the requests whose answers are on the page.
+// bodies() gives {bands, lines, link}: the requests whose answers are on the page, and its address.
 export function bindTake(bodies) {
   const refresh = () => showText(bodies());
   byId("take-what").addEventListener("change", refresh);
@@ -26,7 +26,7 @@ function showText(bodies) {
   const [what, as] = [byId("take-what").value, byId("take-as").value];
   const body = bodies[what];
   const texts = {
-    link: () => location.href,
+    link: () => bodies.link,
     curl: () => (body ? curl(`v1/${what}`, body) : ""),
     python: () => (body ? python(`v1/${what}`, body) : ""),
   };
