@@ -10,8 +10,6 @@ from urllib.parse import urlsplit
 
 import pytest
 
-pytest.importorskip("playwright", reason="playwright is not installed: pip install '.[test]'")
-
 from browser.chromium import CHROMIUM, launched, opened
 
 WATCH = """

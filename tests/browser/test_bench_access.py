@@ -5,15 +5,14 @@ from __future__ import annotations
 import json
 
 import pytest
-
-axe = pytest.importorskip("axe_playwright_python.sync_playwright", reason="axe is not installed")
+from axe_playwright_python.sync_playwright import Axe
 
 PHONE = {"width": 375, "height": 812}
 OPEN_ALL = "() => document.querySelectorAll('details').forEach((d) => { d.open = true; })"
 
 
 def violations(page):
-    found = axe.Axe().run(page)
+    found = Axe().run(page)
     return [
         (entry["id"], [node["html"][:120] for node in entry["nodes"]])
         for entry in found.response["violations"]

@@ -118,6 +118,14 @@ def test_an_ordinate_that_looks_like_an_exponent_is_an_ordinate(measured):
     assert measured(jcamp(["100 1.5E-3 2e+1"], 2, first=100))["y"] == [0.0015, 20]
 
 
+@pytest.mark.parametrize("label", ["XYPOINTS", "XYDATA"])
+def test_pairs_are_read_under_either_label(measured, label):
+    text = jcamp([], 2, YFACTOR=0.5).partition("##XYDATA")[0]
+    found = measured(text + f"##{label}=(XY..XY)\n500.5, 1; 400, 3\n##END=\n")
+    assert found["x"] == [400, 500.5]
+    assert found["y"] == [1.5, 0.5]
+
+
 def test_the_first_block_of_a_compound_file_is_read(measured):
     block = jcamp(["1000 1 2 3"], 3)
     text = "##TITLE=all\r\n##DATA TYPE=LINK\r\n##BLOCKS=3\r\n" + block + jcamp(["1000 7 8 9"], 3)

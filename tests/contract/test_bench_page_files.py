@@ -10,6 +10,7 @@ from pathlib import Path
 import pytest
 
 import ladderband
+from ladderband.formats.look import LOOKS
 from ladderband.web.bench import FILES
 
 NAMES = sorted(path.name for path in FILES.iterdir())
@@ -93,10 +94,10 @@ def test_the_scripts_import_each_other_without_a_circle_or_an_orphan():
     assert done == set(imports)
 
 
-def test_the_colours_have_one_home():
+def test_the_colours_have_one_home(client):
     for path in FILES.iterdir():
-        if path.name != "mark.svg":
-            assert not re.search(r"#[0-9a-fA-F]{6}\b|rgb\(", path.read_text("utf-8")), path.name
+        assert not re.search(r"#[0-9a-fA-F]{6}\b|rgb\(", path.read_text("utf-8")), path.name
+    assert LOOKS["dark"].second in client.get("/bench/mark.svg").text
 
 
 @pytest.mark.parametrize("name", [name for name in NAMES if not name.endswith(".html")])

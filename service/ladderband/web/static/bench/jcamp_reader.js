@@ -5,6 +5,7 @@ const UNITS = [
   [/^1\s*\/\s*CM$|^CM\s*(\^)?-1$|WAVENUMBER/i, "cm-1"], [/NANOMET|^NM$/i, "nm"], [/MICROMET/i, "um"],
   [/ELECTRON\s*VOLT|^EV$/i, "eV"], [/TERAHERTZ|^THZ$/i, "THz"],
 ];
+const DATA = ["XYDATA", "XYPOINTS"];
 const SQZ = "@ABCDEFGHI"; // @ is 0, A to I are 1 to 9, a to i are -1 to -9
 const SQZ_MINUS = "abcdefghi";
 const DIF = "%JKLMNOPQR";
@@ -16,10 +17,11 @@ const TOKEN = /(?:[@A-Ia-i%J-Rj-rS-Zs+-]?(?:\d+\.?\d*|\.\d+)(?:[Ee][+-]\d{1,3})?
 // {x, y, unit, title, notes}; throws an Error whose message says what is wrong.
 export function readJcamp(text) {
   const block = dataBlock(labels(text));
-  const head = Object.fromEntries(block.filter(([name]) => name !== "XYDATA" && name !== "XYPOINTS"));
-  const [form, data] = block.find(([name]) => name === "XYDATA" || name === "XYPOINTS");
+  const head = Object.fromEntries(block.slice(0, -1));
+  const [form, data] = block.at(-1);
   const notes = [];
-  const { x, y } = form === "XYDATA" ? equidistant(data, head, notes) : pairs(data, head);
+  const asPairs = form !== "XYDATA" || /^\s*\(XY\.\.XY\)/i.test(data);
+  const { x, y } = asPairs ? pairs(data, head) : equidistant(data, head, notes);
   if (!x.length) throw new Error("The file holds no points.");
   if (/TRANSMI/i.test(head.YUNITS ?? "")) notes.push("It is a transmission: its bands point down.");
   const unit = UNITS.find(([pattern]) => pattern.test((head.XUNITS ?? "").trim()))?.[1] ?? null;
@@ -41,7 +43,7 @@ function labels(text) {
 
 // The first block with data; a compound file holds several between TITLE and END.
 function dataBlock(records) {
-  const at = records.findIndex(([name]) => name === "XYDATA" || name === "XYPOINTS");
+  const at = records.findIndex(([name]) => DATA.includes(name));
   if (at < 0) throw new Error("This is no JCAMP-DX spectrum: no XYDATA or XYPOINTS in it.");
   const start = records.slice(0, at).map(([name]) => name).lastIndexOf("TITLE");
   return records.slice(Math.max(0, start), at + 1);

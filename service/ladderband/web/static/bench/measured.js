@@ -5,6 +5,7 @@ import { readMeasured } from "./measured_reader.js";
 import { fromWavenumber, toWavenumber } from "./units.js";
 
 const KEPT = "ladderband-measured";
+const MOST_POINTS = 6000; // more than a screen has; of a longer file every second, third... is drawn
 let band = null; // {x, y, unit, title, scale}
 let scaled = null; // the same in the unit of the plot
 
@@ -84,7 +85,8 @@ export function measuredIn(unit, height) {
 
 function converted(unit) {
   const x = band.x.map((value) => fromWavenumber(toWavenumber(value, band.unit), unit));
-  const order = [...x.keys()].sort((a, b) => x[a] - x[b]);
+  const each = Math.ceil(x.length / MOST_POINTS);
+  const order = [...x.keys()].filter((k) => k % each === 0).sort((a, b) => x[a] - x[b]);
   const y = order.map((k) => band.y[k]);
   return { unit, x: order.map((k) => x[k]), y, highest: y.reduce((a, b) => Math.max(a, b)) };
 }
