@@ -8,7 +8,7 @@ from flask import Flask, Response, request
 
 from ladderband.settings import Settings, load_settings
 from ladderband.usecases.limits import Limits
-from ladderband.web import jobs, operations, pages, problems, sweeps
+from ladderband.web import bench, jobs, operations, pages, problems, sweeps
 from ladderband.web.desk import Desk
 from ladderband.web.desk import install as install_desk
 from ladderband.web.guide.routes import blueprint as guide_blueprint
@@ -33,6 +33,7 @@ def create_app(settings: Settings | None = None, desk: Desk | None = None) -> Fl
     problems.install(app)
     operations.install(app, settings.log_requests)
     install_desk(app)
+    app.register_blueprint(bench.blueprint)
     app.register_blueprint(pages.blueprint)
     app.register_blueprint(guide_blueprint)
     app.register_blueprint(jobs.blueprint)
