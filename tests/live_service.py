@@ -49,12 +49,18 @@ class LiveServer:
 
 
 @contextlib.contextmanager
-def serving(*options: str, data_dir: Path = KERNELS) -> Iterator[LiveServer]:
-    """``ladderband serve`` on a free port with further options."""
+def serving(*options: str, data_dir: Path | None = None) -> Iterator[LiveServer]:
+    """``ladderband serve`` on a free port with further options; records of its own unless given."""
+    with tempfile.TemporaryDirectory(prefix="ladderband-") as own:
+        yield from _serving(data_dir or Path(own), options)
+
+
+def _serving(data_dir: Path, options: tuple[str, ...]) -> Iterator[LiveServer]:
     command = [sys.executable, "-m", "ladderband", "serve", "--port", "0"]
     command += ["--data-dir", str(data_dir), "--no-log-requests", *options]
     errors = tempfile.TemporaryFile()  # noqa: SIM115 - closed at the end
-    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=errors)
+    environment = {"NUMBA_CACHE_DIR": str(KERNELS / "kernels"), **os.environ}
+    process = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=errors, env=environment)
     assert process.stdout is not None
     # a watchdog instead of a timed read: a cold kernel cache may take a minute
     watchdog = threading.Timer(150.0, process.kill)

@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 import orjson
 import pytest
+import sqlalchemy as sa
 from flask.testing import FlaskClient
 
 from jobs.conftest import postgresql_database
@@ -22,6 +23,7 @@ from ladderband.jobs.database import Database
 from ladderband.jobs.dispatcher import Engine, EngineOptions
 from ladderband.jobs.executors.local import ChildOptions, LocalExecutor
 from ladderband.jobs.keys import add_key, list_keys, revoke_key
+from ladderband.jobs.records import output, shard
 from ladderband.jobs.submissions import cancel, expire
 from ladderband.settings import Settings
 from ladderband.web.app import create_app
@@ -468,3 +470,19 @@ def test_a_database_that_is_away_leaves_known_keys_valid(tmp_path: Path) -> None
 def test_who_prefers_a_job_gets_one_although_the_answer_is_kept(service: Service) -> None:
     assert service.client.post("/v1/overlaps", json=OVERLAPS).status_code == 200
     assert service.client.post("/v1/overlaps", json=OVERLAPS, headers=ASYNC).status_code == 202
+
+
+def test_a_stored_answer_of_another_build_is_computed_again(service: Service) -> None:
+    body = {**OVERLAPS, "displacement": 0.91}
+    job = service.post("/v1/overlaps", body, **ASYNC).json
+    service.finished(job["id"])
+    with service.desk.database.writing() as connection:
+        chosen = sa.select(shard.c.id).where(shard.c.job_id == job["id"])
+        found = connection.execute(
+            sa.update(output).where(output.c.shard_id.in_(chosen)).values(data=b"of long ago")
+        )
+        assert found.rowcount == 1
+    answer = service.post("/v1/overlaps", body)
+    plain = application(Settings(log_requests=False)).post("/v1/overlaps", json=body)
+    assert (answer.status_code, answer.data) == (200, plain.data)
+    assert service.client.get(job["links"]["result"]).status_code == 410

@@ -12,14 +12,15 @@ _FRAME = """<!doctype html>
 <meta charset="utf-8">
 <meta name="viewport" content="width=device-width, initial-scale=1">
 <title>{title}</title>
-<link rel="icon" href="{docs}interface/favicon-32x32.png">
+<link rel="icon" href="{docs}../bench/mark.svg">
 <link rel="stylesheet" href="{docs}../look.css">
 <link rel="stylesheet" href="{docs}page.css">
 </head>
 <body>
 <a class="skip" href="#text">To the text</a>
 <header><a href="{docs}./">Ladderband</a> <span>guide</span>
-<a class="pages" href="#pages">All pages</a></header>
+<a class="way" href="{docs}../">Bench</a>
+<a class="way pages" href="#pages">All pages</a></header>
 <div class="columns">
 <main id="text">
 {body}
