@@ -2,6 +2,8 @@
 
 const LINE_PX = 7; // a line this near to the pointer is meant
 const DRAG_PX = 8;
+const PER_TURN = 0.0022; // one notch is 100 px, or 3 lines in some browsers
+const LINE_OF_WHEEL = 33;
 const REST_MS = 400; // after this pause the wheel has come to rest
 const SEEN_PX = 2.5; // lower sticks are not stepped on
 
@@ -43,7 +45,7 @@ export function listen(plot, on) {
     if (!plot.scene || !(event.ctrlKey || document.activeElement === place)) return;
     event.preventDefault();
     const middle = plot.x.at(at(event));
-    const factor = event.deltaY > 0 ? 1.25 : 0.8;
+    const factor = Math.exp(PER_TURN * event.deltaY * (event.deltaMode ? LINE_OF_WHEEL : 1));
     on.zoom(middle - (middle - plot.x.low) * factor, middle + (plot.x.high - middle) * factor, "slide");
     clearTimeout(turning);
     turning = setTimeout(on.rest, REST_MS);
