@@ -50,8 +50,9 @@ def test_the_page_says_what_the_service_says(page, watched):
     """Position, intensity and bound of the strongest line in the table are the service's."""
     body = page.evaluate(
         """async () => {
-            const { linesBody } = await import('/bench/requests.js');
-            const { example } = await import('/bench/state.js');
+            const main = document.querySelector('script[type=module]').src;
+            const { linesBody } = await import(new URL('requests.js', main));
+            const { example } = await import(new URL('state.js', main));
             return linesBody(example(), 0.02);
         }"""
     )
@@ -201,13 +202,16 @@ def test_a_wrong_cell_says_so_beside_it_and_the_last_plot_stays(page, watched):
     assert not page.is_visible("#stale")
 
 
-@pytest.mark.parametrize("text", ["", "abc", "1,5"])
-def test_what_is_no_number_is_refused_by_the_service_in_its_words(page, watched, text):
+def test_what_is_no_number_is_refused_by_the_service_in_its_words(page, watched):
     watched.expected.append(REFUSED)
-    place = "#temperature" if text else "#width"  # a temperature may be left out
-    page.fill(place, text)
-    page.wait_for_selector(f"{place}[aria-invalid]")
-    assert "Allowed" in page.inner_text(".wrong >> nth=0")
+    for field, text in (("#width", ""), ("#temperature", "abc"), ("#width", "1,5")):
+        page.fill(field, text)
+        page.wait_for_selector(f"{field}[aria-invalid]")
+        assert "Allowed" in page.inner_text(
+            f"label:has({field}) + .wrong, .slide:has({field}) + .wrong"
+        )
+        page.fill(field, "100")
+        page.wait_for_function("() => !document.querySelector('[aria-invalid]')")
 
 
 def test_absolute_scales_ask_for_a_moment_and_for_caution(page, watched):
@@ -355,7 +359,7 @@ def test_the_wheel_zooms_where_the_pointer_is_and_is_one_step_back(page):
     assert float(page.input_value("#range-stop")) - float(page.input_value("#range-start")) < 4000
 
 
-@pytest.mark.parametrize("fragment", ["nonsense", "e30", "%00%ff", "eyJtb2RlcyI6W119"])
+@pytest.mark.parametrize("fragment", ["%00%ff", "eyJtb2RlcyI6W119"])
 def test_a_broken_link_opens_a_page_all_the_same(watched, fragment):
     page = watched.page(f"/#{fragment}")
     assert page.locator("table.modes tbody").count() == EXAMPLE_MODES

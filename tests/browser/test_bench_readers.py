@@ -29,7 +29,8 @@ def reader(browser, live_server):
     def call(module, name, *arguments):
         return page.evaluate(
             """async ([module, name, given]) => {
-                const found = await import(`/bench/${module}.js`);
+                const main = document.querySelector('script[type=module]').src;
+                const found = await import(new URL(`${module}.js`, main));
                 try { return { value: found[name](...given) }; }
                 catch (error) { return { error: error.message }; }
             }""",

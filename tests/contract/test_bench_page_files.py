@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import shutil
 import tomllib
 from html.parser import HTMLParser
 from pathlib import Path
@@ -11,36 +12,64 @@ import pytest
 
 import ladderband
 from ladderband.formats.look import LOOKS
-from ladderband.web.bench import FILES
+from ladderband.web.bench import FILES, contents, page
 
 NAMES = sorted(path.name for path in FILES.iterdir())
 TYPES = {"js": "javascript", "css": "text/css", "svg": "image/svg+xml", "html": "text/html"}
 MAX_LINES = 300
 
 
-@pytest.mark.parametrize("address", ["/", *(f"/bench/{name}" for name in NAMES)])
-def test_every_file_has_its_type_its_tag_and_the_policy(client, address):
-    with client.get(address) as got:
-        assert got.status_code == 200
-        assert got.data
-    ending = "html" if address == "/" else address.rpartition(".")[2]
-    assert TYPES[ending] in got.content_type
+def fetched(client, address, status=200, method="get", **options):
+    with getattr(client, method)(address, **options) as got:
+        assert got.status_code == status
+        return got, got.data
+
+
+@pytest.mark.parametrize("name", [name for name in NAMES if name != "index.html"])
+def test_every_file_has_its_type_and_the_policy_and_is_kept_for_good(client, name):
+    address = f"/bench/{contents()}/{name}"
+    got, data = fetched(client, address)
+    assert data
+    assert TYPES[name.rpartition(".")[2]] in got.content_type
+    assert_guarded(got)
+    assert "immutable" in got.headers["Cache-Control"]
+    head, data = fetched(client, address, method="head")
+    assert data == b""
+    assert head.headers["Content-Type"] == got.headers["Content-Type"]
+    old, _ = fetched(client, f"/bench/0123456789abcdef/{name}")
+    assert "immutable" not in old.headers.get("Cache-Control", "")
+
+
+def test_the_page_is_asked_for_again_and_names_the_files_of_its_version(
+    client, tmp_path, monkeypatch
+):
+    got, data = fetched(client, "/")
+    assert "text/html" in got.content_type
+    assert_guarded(got)
+    assert got.headers["Cache-Control"] == "no-cache"
+    _, nothing = fetched(client, "/", 304, headers={"If-None-Match": got.headers["ETag"]})
+    assert nothing == b""
+    _, nothing = fetched(client, "/", method="head")
+    assert nothing == b""
+    for name in ("main.js", "bench.css", "mark.svg"):
+        assert f'"bench/{contents()}/{name}"' in data.decode()
+    # another script, another address
+    shutil.copytree(FILES, tmp_path / "bench")
+    (tmp_path / "bench" / "main.js").write_text("// changed")
+    monkeypatch.setattr("ladderband.web.bench.FILES", tmp_path / "bench")
+    later, _ = fetched(client, "/", headers={"If-None-Match": got.headers["ETag"]})
+    assert later.headers["ETag"] != got.headers["ETag"]
+
+
+def assert_guarded(got):
     assert got.headers["X-Content-Type-Options"] == "nosniff"
     assert "unsafe" not in got.headers["Content-Security-Policy"]
     assert got.headers["Content-Security-Policy"].startswith("default-src 'self';")
-    with client.get(address, headers={"If-None-Match": got.headers["ETag"]}) as again:
-        assert again.status_code == 304
-        assert again.data == b""
-    with client.head(address) as head:
-        assert head.status_code == 200
-        assert head.data == b""
-        assert head.headers["ETag"] == got.headers["ETag"]
 
 
 @pytest.mark.parametrize("name", ["nothing.js", "../pages.py", "..%2fpages.py", "", ".."])
 def test_nothing_else_is_served(client, name):
-    with client.get(f"/bench/{name}") as got:
-        assert got.status_code == 404
+    fetched(client, f"/bench/{contents()}/{name}", 404)
 
 
 class Tags(HTMLParser):
@@ -54,7 +83,7 @@ class Tags(HTMLParser):
 
 def tags():
     parser = Tags()
-    parser.feed((FILES / "index.html").read_text("utf-8"))
+    parser.feed(page())
     return parser.found
 
 
@@ -97,7 +126,7 @@ def test_the_scripts_import_each_other_without_a_circle_or_an_orphan():
 def test_the_colours_have_one_home(client):
     for path in FILES.iterdir():
         assert not re.search(r"#[0-9a-fA-F]{6}\b|rgb\(", path.read_text("utf-8")), path.name
-    assert LOOKS["dark"].second in client.get("/bench/mark.svg").text
+    assert LOOKS["dark"].second in client.get("/bench/x/mark.svg").text
 
 
 @pytest.mark.parametrize("name", [name for name in NAMES if not name.endswith(".html")])

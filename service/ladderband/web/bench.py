@@ -1,13 +1,13 @@
 """The bench page at ``/``: a page for people, which asks only what any client can ask.
 
-Its files are static and lie in ``static/bench``; the colours come from ``/look.css``. Browsers keep
-them and ask by ETag whether they are still good, so a new version is seen at the next load.
+Its files lie in ``static/bench`` and are served below an address that names their contents: a browser
+keeps them for good and asks only for the page itself, and never mixes files of two versions.
 """
 
 from __future__ import annotations
 
+import hashlib
 from dataclasses import asdict
-from functools import cache
 from pathlib import Path
 
 from flask import Blueprint, Response, request, send_from_directory
@@ -24,35 +24,49 @@ POLICY = (
 )
 """Stricter than for the other pages: no inline style either."""
 
+FOR_GOOD = "public, max-age=31536000, immutable"
+
 
 @blueprint.get("/")
-def bench() -> Response:
+def bench() -> WerkzeugResponse:
     """The page."""
-    return _file("index.html")
-
-
-@blueprint.get("/bench/<name>")
-def bench_file(name: str) -> Response:
-    """One of its scripts, or its stylesheet."""
-    return _file(name)
-
-
-@blueprint.get("/bench/mark.svg")
-def mark() -> WerkzeugResponse:
-    """Its mark, in the colours of the plots."""
-    response = _guarded(Response(_mark(), content_type="image/svg+xml"))
+    response = _guarded(Response(page(), content_type="text/html; charset=utf-8"))
     response.headers["Cache-Control"] = "no-cache"
     response.add_etag()
     return response.make_conditional(request)
 
 
-@cache
-def _mark() -> str:
-    return (FILES / "mark.svg").read_text("utf-8").format_map(asdict(LOOKS["dark"]))
+def page() -> str:
+    """``index.html`` with the address of its files."""
+    text = (FILES / "index.html").read_text("utf-8")
+    return text.replace('"bench/', f'"bench/{contents()}/')
 
 
-def _file(name: str) -> Response:
-    return _guarded(send_from_directory(FILES, name))
+def contents() -> str:
+    """A name for what is in all the files; not kept, so that an edited file is seen at once."""
+    digest = hashlib.blake2b(digest_size=8)
+    for path in sorted(FILES.iterdir()):
+        digest.update(path.read_bytes())
+    return digest.hexdigest()
+
+
+@blueprint.get("/bench/<version>/<name>")
+def bench_file(version: str, name: str) -> Response:
+    """One of its scripts, or its stylesheet."""
+    return _kept(send_from_directory(FILES, name), version)
+
+
+@blueprint.get("/bench/<version>/mark.svg")
+def mark(version: str) -> Response:
+    """Its mark, in the colours of the plots."""
+    text = (FILES / "mark.svg").read_text("utf-8").format_map(asdict(LOOKS["dark"]))
+    return _kept(Response(text, content_type="image/svg+xml"), version)
+
+
+def _kept(response: Response, version: str) -> Response:
+    if version == contents():  # an address of another version still answers, but is not kept
+        response.headers["Cache-Control"] = FOR_GOOD
+    return _guarded(response)
 
 
 def _guarded(response: Response) -> Response:

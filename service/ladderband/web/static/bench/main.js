@@ -101,6 +101,8 @@ function askWaves() {
 function settled(kind, good) {
   if (good) failing.delete(kind);
   else failing.add(kind);
+  byId("stale").hidden = !failing.has("Band") || !stage.bandsAnswer;
+  byId("plot").classList.toggle("is-stale", failing.has("Band"));
   showTake();
   finish();
 }
@@ -109,8 +111,6 @@ function settled(kind, good) {
 function finish() {
   if (waiting("Band", "Lines")) return;
   if (failing.has("Lines") && !failing.has("Band")) stage.setLines(null, null);
-  byId("stale").hidden = !failing.has("Band") || !stage.bandsAnswer;
-  byId("plot").classList.toggle("is-stale", failing.has("Band"));
   if (stage.refit()) askBand();
   else stage.complete(() => byId("plot").setAttribute("aria-busy", String(waiting("Band", "Lines"))));
 }

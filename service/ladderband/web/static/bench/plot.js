@@ -63,7 +63,7 @@ export class Plot {
   #grid(width, height) {
     const group = svg("g", { class: "grid" });
     const { unit, xName, yName } = this.scene;
-    const across = ticks(this.x.low, this.x.high, (width - LEFT) / 90);
+    const across = ticks(this.x.low, this.x.high, (width - LEFT) / 72);
     const base = height - FOOT;
     group.append(svg("path", { d: `M${LEFT} ${base}H${width - RIGHT}`, class: "rule" }));
     for (const value of across.values) {

@@ -66,7 +66,7 @@ async function firstAffordable(path, bodies, options) {
 function settle(kind, problem, on) {
   if (problem) asked.delete(kind); // asking once more may help
   setWait(kind, null);
-  if (problem?.slug === "unauthorized") byId("key-form").hidden = false;
+  if (!problem || problem.slug === "unauthorized") byId("key-form").hidden = !problem;
   setProblem(kind, problem?.members ?? null, on.pointer);
 }
 

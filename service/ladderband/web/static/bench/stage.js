@@ -43,11 +43,12 @@ export class Stage {
       leave: () => this.#point(null),
       select: (line) => this.select(line),
       zoom: (low, high, kind) => this.zoom(low, high, kind),
+      range: () => this.range(),
       rest: () => this.store.change({}, "commit"),
       fit: () => this.fit(),
     });
-    byId("zoom-in").addEventListener("click", () => this.plot.scene && this.zoom(...zoomed(this.plot, 0.6)));
-    byId("zoom-out").addEventListener("click", () => this.plot.scene && this.zoom(...zoomed(this.plot, 1 / 0.6)));
+    byId("zoom-in").addEventListener("click", () => this.plot.scene && this.zoom(...zoomed(this.plot, 0.6, this.range())));
+    byId("zoom-out").addEventListener("click", () => this.plot.scene && this.zoom(...zoomed(this.plot, 1 / 0.6, this.range())));
     byId("zoom-fit").addEventListener("click", () => this.fit());
   }
 
@@ -67,9 +68,15 @@ export class Stage {
     return { unit: state.unit, start, stop, points: pointsFor(span, width) };
   }
 
+  // The range that is asked for, or else the one that is drawn.
+  range() {
+    const asked = (this.store.state.range ?? []).map(value);
+    const known = asked.length === 2 && asked.every(Number.isFinite) && this.store.state.unit === this.unit;
+    return known ? asked : [this.plot.x.low, this.plot.x.high];
+  }
+
   zoom(low, high, kind = "commit") {
     const text = (x) => String(Number(x.toPrecision(7)));
-    Object.assign(this.plot.x, { low, high }); // a second turn of the wheel goes on from here
     this.store.change({ range: [text(low), text(high)] }, kind);
   }
 
@@ -119,6 +126,7 @@ export class Stage {
     this.lines = lineColumns(this.linesAnswer, this.unit);
     const again = this.lines.text.indexOf(chosen);
     this.selected = again < 0 ? null : again; // the same line in the new list
+    if (this.#pointed) this.#pointed = { ...this.#pointed, line: null };
   }
 
   select(line) {
