@@ -30,7 +30,7 @@ FOR_GOOD = "public, max-age=31536000, immutable"
 @blueprint.get("/")
 def bench() -> WerkzeugResponse:
     """The page."""
-    response = _guarded(Response(page(), content_type="text/html; charset=utf-8"))
+    response = guarded(Response(page(), content_type="text/html; charset=utf-8"), POLICY)
     response.headers["Cache-Control"] = "no-cache"
     response.add_etag()
     return response.make_conditional(request)
@@ -66,9 +66,4 @@ def mark(version: str) -> Response:
 def _kept(response: Response, version: str) -> Response:
     if version == contents():  # an address of another version still answers, but is not kept
         response.headers["Cache-Control"] = FOR_GOOD
-    return _guarded(response)
-
-
-def _guarded(response: Response) -> Response:
-    guarded(response).headers["Content-Security-Policy"] = POLICY
-    return response
+    return guarded(response, POLICY)

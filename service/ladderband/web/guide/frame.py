@@ -12,7 +12,7 @@ _FRAME = """<!doctype html>
 <meta charset="utf-8">
 <meta name="viewport" content="width=device-width, initial-scale=1">
 <title>{title}</title>
-<link rel="icon" href="{docs}../bench/mark.svg">
+<link rel="icon" href="{docs}../bench/any/mark.svg">
 <link rel="stylesheet" href="{docs}../look.css">
 <link rel="stylesheet" href="{docs}page.css">
 </head>
