@@ -141,3 +141,12 @@ def test_long_titles_are_wrapped_and_shortened():
     )
     assert (long[:, 295:] == long[0, 0]).all()
     assert not (short == long).all()
+
+
+@pytest.mark.parametrize(
+    ("example", "name"), [("photoelectron", "ionisation energy"), ("cold-emission", "wavenumber")]
+)
+def test_the_axis_of_a_band_says_what_runs_along_it(example, name):
+    figure = Figure()
+    band_plot(*band_answer(example))(figure, LOOKS["light"])
+    assert figure.axes[0].get_xlabel().startswith(name)

@@ -80,7 +80,7 @@ def band_plot(question: BandsQuestion, answer: BandsAnswer) -> Draw:
             ax.set_xlim(float(x[0]), float(x[-1]))
         top = max(float(band.intensity.max()) for band in answer.bands)
         ax.set_ylim(0.0, 1.08 * top if top > 0.0 else 1.0)
-        ax.set_xlabel(_AXIS_NAMES[answer.axis.unit])
+        ax.set_xlabel(_axis_name(answer))
         ax.set_ylabel(_SCALE_NAMES[question.scale].replace("{axis}", _unit(answer.axis.unit)))
         if answer.bands[0].lines and question.line_shape.bath is None:
             _label_lines(ax, look, answer)
@@ -88,6 +88,13 @@ def band_plot(question: BandsQuestion, answer: BandsAnswer) -> Draw:
             ax.legend(frameon=False, fontsize=8.5, labelcolor=look.ink)
 
     return draw
+
+
+def _axis_name(answer: BandsAnswer) -> str:
+    """What runs along the axis: of a photoelectron band an energy of the electrons, not of light."""
+    if answer.axis.unit == "eV" and answer.bands[0].process == "photoelectron":
+        return "ionisation energy / eV"
+    return _AXIS_NAMES[answer.axis.unit]
 
 
 def _label_lines(ax: Axes, look: Look, answer: BandsAnswer) -> None:
