@@ -29,7 +29,9 @@ class UnreadableAnswer(ValueError):
 
 def dump_answer(answer: Any) -> bytes:
     """The bytes of an answer dataclass."""
-    return pickle.dumps(answer, protocol=5)
+    stream = io.BytesIO()  # grows in place; pickle.dumps copies large arrays as it grows
+    pickle.Pickler(stream, protocol=5).dump(answer)
+    return stream.getvalue()
 
 
 def load_answer(parts: Iterable[bytes]) -> Any:

@@ -37,12 +37,14 @@ def serve(pipe: Connection, kinds_reference: str) -> None:
     pipe.send_bytes(b"ready")
     while True:
         try:
-            pipe.send_bytes(perform(pipe.recv_bytes(), kinds))
+            for part in perform(pipe.recv_bytes(), kinds):
+                pipe.send_bytes(memoryview(part))  # of bytes, each piece sent would copy the rest
         except EOFError:
             return
         except MemoryError:
             gc.collect()
-            pipe.send_bytes(b"p" + orjson.dumps(_memory_problem()))
+            pipe.send_bytes(b"p")
+            pipe.send_bytes(orjson.dumps(_memory_problem()))
             return  # a fresh process starts with whole memory
 
 

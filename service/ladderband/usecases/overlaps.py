@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -73,7 +74,6 @@ class OverlapsAnswer:
     """
 
     overlap_integrals: Floats | list[DecimalTable]
-    franck_condon_factors: Floats | list[DecimalTable]
     sums: Floats | list[list[str]]
     accuracy: Accuracy
     factors_accuracy: Accuracy
@@ -84,6 +84,16 @@ class OverlapsAnswer:
     populations_accuracy: Accuracy | None = None
     undecided: tuple[UndecidedElement, ...] = ()
     warnings: tuple[str, ...] = ()
+    decided_factors: Floats | list[DecimalTable] | None = None
+    """Factors with ``digits``, each decided by itself; without, they are the squares."""
+
+    @cached_property
+    def franck_condon_factors(self) -> Floats | list[DecimalTable]:
+        """The factors, made where they are asked for: an answer on record does without."""
+        if self.decided_factors is not None:
+            return self.decided_factors
+        assert isinstance(self.overlap_integrals, np.ndarray)
+        return self.overlap_integrals * self.overlap_integrals
 
 
 def overlaps(question: OverlapsQuestion, limits: Limits, deadline: Deadline) -> OverlapsAnswer:
@@ -172,12 +182,10 @@ def _float_answer(question: OverlapsQuestion, deadline: Deadline) -> OverlapsAns
         deadline,
     )
     table = found.tables[:, : question.v_initial_max + 1, : question.v_final_max + 1]
-    factors = table * table
     elements, elements_accuracy = _float_elements(question, found)
     return OverlapsAnswer(
         overlap_integrals=table,
-        franck_condon_factors=factors,
-        sums=factors.sum(axis=2),
+        sums=np.einsum("bvn,bvn->bv", table, table),
         accuracy=Accuracy(found.bounds, "proven", found.route),
         factors_accuracy=Accuracy(_square_bound(found.bounds), "proven", found.route),
         sums_accuracy=Accuracy(_sum_bound(found.bounds, table.shape[2]), "proven", found.route),
@@ -234,7 +242,7 @@ def _decimal_answer(question: OverlapsQuestion, digits: int, deadline: Deadline)
     present = question.operator is not None
     return OverlapsAnswer(
         overlap_integrals=_present([table.overlaps for table in tables], digits),
-        franck_condon_factors=_present([table.factors for table in tables], digits),
+        decided_factors=_present([table.factors for table in tables], digits),
         sums=_present_rows([table.sums for table in tables], digits),
         accuracy=accuracy,
         factors_accuracy=accuracy,

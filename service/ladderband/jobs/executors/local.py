@@ -62,14 +62,15 @@ class Child:
     def receive(self) -> Outcome | None:
         """The outcome that is waiting in the pipe; None for the greeting of a new process."""
         try:
-            message = self.pipe.recv_bytes()
+            letter = self.pipe.recv_bytes()
+            if not self.ready:
+                self.ready = True
+                return None
+            body = self.pipe.recv_bytes()
         except (EOFError, OSError):
             return self._death()
-        if not self.ready:
-            self.ready = True
-            return None
         seconds = time.monotonic() - self.begun
-        return Outcome("done" if message[:1] == b"r" else "refused", message[1:], seconds)
+        return Outcome("done" if letter == b"r" else "refused", body, seconds)
 
     def _death(self) -> Outcome:
         code = self.process.wait()
@@ -91,8 +92,10 @@ class Child:
 
 
 def _environment() -> dict[str, str]:
-    """One thread for each compute process: the shards are the parallelism."""
+    """One thread for each compute process, as the shards are the parallelism; and memory of large
+    arrays goes back to the system at once (glibc keeps it otherwise, after the first of a size)."""
     pinned = {"OMP_NUM_THREADS": "1", "OPENBLAS_NUM_THREADS": "1", "MKL_NUM_THREADS": "1"}
+    pinned["MALLOC_MMAP_THRESHOLD_"] = "4000000"
     return {**os.environ, **pinned}
 
 
