@@ -45,8 +45,8 @@ from ladderband.numerics.quanta_lists import QuantaPairs, lower_neighbours
 from ladderband.numerics.rounding import UNIT_ROUNDOFF
 from ladderband.numerics.transition import Floats
 
-THREADED_FROM = 30_000
-"""Sets of a shell of rows from which two threads share it (some 0.2 ms)."""
+THREADED_FROM = 100_000
+"""Sets of a shell of rows from which a second thread takes half of it (1 ms; waking it takes 0.1)."""
 
 
 @dataclass(frozen=True)
@@ -170,6 +170,11 @@ def amplitude_table(pairs: QuantaPairs, ladder: Ladder) -> QuantaTable:
 
     Cost: 10 to 25 ns a set with its bound, neighbours of the two lists included.
     """
+    with ThreadPoolExecutor(1) if pairs.count >= THREADED_FROM else nullcontext() as second:
+        return _table(pairs, ladder, second)
+
+
+def _table(pairs: QuantaPairs, ladder: Ladder, second: ThreadPoolExecutor | None) -> QuantaTable:
     outer, inner = lower_neighbours(pairs.outer.quanta), lower_neighbours(pairs.inner.quanta)
     shell = pairs.outer.shell
     most = int(shell[-1]) + int(pairs.inner.shell.max())
@@ -184,10 +189,9 @@ def amplitude_table(pairs: QuantaPairs, ladder: Ladder) -> QuantaTable:
     _first_row(int(pairs.start[1]), M_inner, w_inner, inner, found, step)
     edges = np.searchsorted(shell, np.arange(1, shell[-1] + 2)).tolist()
     arguments = (M_outer, M_cross, w_outer, outer, inner, pairs.start, found, step)
-    with ThreadPoolExecutor(2) if pairs.count >= THREADED_FROM else nullcontext() as pool:
-        for begin, end in pairwise(edges):
-            _shared(pool, pairs.start, begin, end, _rows, *arguments)
-        moment = _moments(pool, pairs, ladder, outer, inner, found, step)
+    for begin, end in pairwise(edges):
+        _shared(second, pairs.start, begin, end, _rows, *arguments)
+    moment = _moments(second, pairs, ladder, outer, inner, found, step)
     return QuantaTable(pairs, *found, *moment)
 
 
@@ -200,7 +204,7 @@ def _blocks(M: Floats, pairs: QuantaPairs) -> tuple[Floats, Floats, Floats]:
 
 
 def _moments(
-    pool: ThreadPoolExecutor | None,
+    second: ThreadPoolExecutor | None,
     pairs: QuantaPairs,
     ladder: Ladder,
     outer: Any,
@@ -216,23 +220,23 @@ def _moments(
         rows = (linear[pairs.outer_index], linear[pairs.inner_index])
         arguments = (rows, outer, inner, pairs.start, found, (value[x], bound[x]), step)
         every = len(pairs.outer.cost)
-        _shared(pool, pairs.start, 0, every, _moment_rows, ladder.constant[x], *arguments)
+        _shared(second, pairs.start, 0, every, _moment_rows, ladder.constant[x], *arguments)
     return value, bound
 
 
 def _shared(
-    pool: ThreadPoolExecutor | None,
+    second: ThreadPoolExecutor | None,
     start: NDArray[np.int64],
     begin: int,
     end: int,
     kernel: Callable[..., None],
     *arguments: Any,
 ) -> None:
-    """Run a kernel over the rows begin..end-1, in two halves of equal work when that is worth it."""
-    if pool is None or start[end] - start[begin] < THREADED_FROM:
+    """Run a kernel over the rows begin..end-1; half of the work in a second thread when worth it."""
+    if second is None or start[end] - start[begin] < THREADED_FROM:
         kernel(begin, end, *arguments)
         return
     middle = int(np.searchsorted(start, (start[begin] + start[end]) // 2))
-    halves = [pool.submit(kernel, *half, *arguments) for half in ((begin, middle), (middle, end))]
-    for half in halves:
-        half.result()
+    other = second.submit(kernel, middle, end, *arguments)
+    kernel(begin, middle, *arguments)
+    other.result()
