@@ -9,6 +9,7 @@ memory from 10^4 to 10^7 lines (each in a process of its own), (d) two threads a
 
 from __future__ import annotations
 
+import contextlib
 import os
 import sys
 from pathlib import Path
@@ -19,6 +20,8 @@ sys.path.insert(0, str(Path(__file__).parents[1]))
 import math
 import multiprocessing
 import time
+from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import replace
 
 import numpy as np
@@ -133,14 +136,31 @@ def growth() -> None:
         )
 
 
-def two_cores(case: Prepared) -> None:
-    """The same table with its large shells shared by two threads, and not."""
-    budget = budget_for(case, 1_000_000)
-    shared = timed(lambda: grown(case, budget), 5)
+def two_cores(case: Prepared, sets: int) -> None:
+    """One table with its large shells shared by two threads, and two tables at once; least of rounds."""
+    budget = budget_for(case, sets)
+
+    def one(_: object = None) -> QuantaTable:
+        return grown(case, budget)
+
+    alone, shared, both = [], [], []
+    for _ in range(6):
+        shared.append(timed(one, 1))
+        with second_thread_off(), ThreadPoolExecutor(2) as pool:
+            alone.append(timed(one, 1))
+            both.append(timed(lambda pool=pool: list(pool.map(one, "ab")), 1))
+    print(
+        f"{sets} sets: one table in two threads {min(alone) / min(shared):.2f}x (goal 1.7x), "
+        f"two tables at once {2 * min(alone) / min(both):.2f}x"
+    )
+
+
+@contextlib.contextmanager
+def second_thread_off() -> Iterator[None]:
+    """Tables without a second thread."""
     quanta_table.THREADED_FROM, before = 10**12, quanta_table.THREADED_FROM
-    alone = timed(lambda: grown(case, budget), 5)
+    yield
     quanta_table.THREADED_FROM = before
-    print(f"10^6 sets: two cores against one {alone / shared:.2f}x (goal 1.7x)")
 
 
 def main() -> None:
@@ -149,7 +169,8 @@ def main() -> None:
     for name, transition in CASES.items():
         against_dictionary(name, prepared(transition), 200_000)
     against_memory(case)
-    two_cores(case)
+    for sets in (1_000_000, 10_000_000):
+        two_cores(case, sets)
     growth()
 
 
