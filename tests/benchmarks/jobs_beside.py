@@ -25,21 +25,15 @@ import psutil
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 
+from jobs.engine_helpers import OVERLAPS
 from live_service import LiveServer, serving
 
 TURNS = 12
 TURN_S = 1.0
 
-SMALL: dict[str, Any] = {
-    "wavenumber_initial_cm1": 1000.0,
-    "wavenumber_final_cm1": 900.0,
-    "displacement": 1.5,
-    "v_initial_max": 1,
-    "v_final_max": 5,
-}
 SWEEP = {
     "resource": "overlaps",
-    "request": {**SMALL, "v_initial_max": 25, "v_final_max": 25, "digits": 50},
+    "request": {**OVERLAPS, "v_initial_max": 25, "v_final_max": 25, "digits": 50},
     "vary": [{"pointer": "/displacement", "range": {"start": 0.1, "stop": 3.0, "points": 500_000}}],
     "collect": ["/sums/0"],
 }
@@ -59,10 +53,10 @@ def send(http: HTTPConnection, path: str, body: Any) -> bytes:
 def one_connection(address: str, _: int) -> Times:
     """The time of each small request of a turn, one after the other."""
     http = HTTPConnection(address, timeout=60)
-    send(http, "/v1/overlaps", SMALL)
+    send(http, "/v1/overlaps", OVERLAPS)
     times, end = [], time.perf_counter() + TURN_S
     while (begun := time.perf_counter()) < end:
-        send(http, "/v1/overlaps", SMALL)
+        send(http, "/v1/overlaps", OVERLAPS)
         times.append(time.perf_counter() - begun)
     http.close()
     return times

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
+from typing import Any
 
 import orjson
 
@@ -13,6 +14,15 @@ from ladderband.jobs.kinds import SWEEPS
 from ladderband.jobs.submissions import JobView, NewJob, canonical, request_digest, submit, view
 
 KINDS = "jobs.sample_kinds:kinds"
+
+OVERLAPS: dict[str, Any] = {
+    "wavenumber_initial_cm1": 1000.0,
+    "wavenumber_final_cm1": 900.0,
+    "displacement": 1.5,
+    "v_initial_max": 1,
+    "v_final_max": 5,
+}
+"""A small request of the resource of that name."""
 
 
 def put(database: Database, kind: str, request: object, **changes: object) -> JobView:

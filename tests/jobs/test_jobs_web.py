@@ -17,7 +17,7 @@ import sqlalchemy as sa
 from flask.testing import FlaskClient
 
 from jobs.conftest import postgresql_database
-from jobs.engine_helpers import until
+from jobs.engine_helpers import OVERLAPS, until
 from ladderband.jobs import claims
 from ladderband.jobs.database import Database
 from ladderband.jobs.dispatcher import Engine, EngineOptions
@@ -30,13 +30,6 @@ from ladderband.web.app import create_app
 from ladderband.web.desk import Desk
 from ladderband.web.service import REFERENCE
 
-OVERLAPS: dict[str, Any] = {
-    "wavenumber_initial_cm1": 1000.0,
-    "wavenumber_final_cm1": 900.0,
-    "displacement": 1.5,
-    "v_initial_max": 1,
-    "v_final_max": 5,
-}
 SWEEP: dict[str, Any] = {
     "resource": "overlaps",
     "request": OVERLAPS,

@@ -19,7 +19,7 @@ import httpx
 import pytest
 import sqlalchemy as sa
 
-from jobs.engine_helpers import until
+from jobs.engine_helpers import OVERLAPS, until
 from ladderband.jobs import records
 from ladderband.jobs.database import Database
 from live_service import LiveServer, serving
@@ -28,14 +28,6 @@ pytestmark = [pytest.mark.slow, pytest.mark.timeout(1800)]
 
 CLIENTS, REQUESTS = 64, 1000
 POINTS = 100_000
-
-SMALL: dict[str, Any] = {
-    "wavenumber_initial_cm1": 1000.0,
-    "wavenumber_final_cm1": 900.0,
-    "displacement": 1.5,
-    "v_initial_max": 1,
-    "v_final_max": 5,
-}
 
 
 @pytest.fixture
@@ -64,7 +56,7 @@ def one_client(url: str, begin: threading.Barrier) -> list[str]:
     begin.wait()
     found = []
     for number in range(REQUESTS):
-        body = json.dumps({**SMALL, "displacement": number / 500})
+        body = json.dumps({**OVERLAPS, "displacement": number / 500})
         head = {"Content-Type": "application/json", "Prefer": "respond-async"}
         http.request("POST", "/v1/overlaps", body, head)
         answer = http.getresponse()
@@ -112,7 +104,7 @@ def sweep(points: int) -> dict[str, Any]:
     span = {"start": 0.0, "stop": 3.0, "points": points}
     return {
         "resource": "overlaps",
-        "request": SMALL,
+        "request": OVERLAPS,
         "vary": [{"pointer": "/displacement", "range": span}],
         "collect": ["/sums/0", "/accuracy/bound"],
     }

@@ -22,7 +22,7 @@ POLICY = (
     "default-src 'self'; img-src 'self' blob:; object-src 'none'; base-uri 'none'; "
     "form-action 'none'; frame-ancestors 'none'"
 )
-"""Stricter than for the other pages: no inline style either."""
+"""Scripts and styles of its own files only, nothing inline; blobs are the files it lets a reader save."""
 
 FOR_GOOD = "public, max-age=31536000, immutable"
 

@@ -79,7 +79,7 @@ class Ledger:
             self.flush()
 
     def _count(self, entries: list[Entry]) -> None:
-        """One update of each counter for all entries: an update costs 20 microseconds."""
+        """One update of each counter for all entries; a histogram takes its times one by one."""
         groups: dict[tuple[str, str, int], list[float]] = {}
         for entry in entries:
             key = (entry.method, entry.route, entry.status)
